@@ -34,7 +34,7 @@ def modules_named(contracts: list[Contract]) -> set[str]:
 
 
 def is_own(name: str) -> bool:
-    return name.split(".")[0] in ("edgectl", "sim_server") and "*" not in name
+    return name.split(".", maxsplit=1)[0] in ("edgectl", "sim_server") and "*" not in name
 
 
 def module_exists(repo_root: Path, name: str) -> bool:
