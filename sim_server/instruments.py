@@ -52,15 +52,19 @@ class Transmitter:
     def __init__(self, seed: int, data: InstrumentData) -> None:
         self._data = data
         self._normals = NormalStream(seed, f"noise {data.tag}")
-        self._drift = Drift(seed, f"{data.tag} absolute", data.drift)
-        self._relative_drift = Drift(seed, f"{data.tag} relative", data.relative_drift)
+        # A flow meter is wrong in proportion to its reading, the others by an amount.
+        self._relative = data.relative_noise > 0.0
+        self._drift = Drift(seed, data.tag, data.relative_drift if self._relative else data.drift)
 
     def read(self, true_value: float, time_s: float) -> float:
         """The reading of a true value; draws one number, so call once per plant second."""
         data = self._data
         normal = self._normals.next()
-        factor = 1.0 + self._relative_drift.at(time_s) + data.relative_noise * normal
-        value = true_value * factor + self._drift.at(time_s) + data.noise * normal
+        bias = self._drift.at(time_s)
+        if self._relative:
+            value = true_value * (1.0 + bias + data.relative_noise * normal)
+        else:
+            value = true_value + bias + data.noise * normal
         return min(data.high, max(data.low, value))
 
 
