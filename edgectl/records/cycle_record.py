@@ -7,7 +7,8 @@ these records alone.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from typing import Any
 
 from edgectl.records.advice import Advice, Delivery, SuggestedMove
 from edgectl.records.measurements import Measurement, MovePosition
@@ -153,4 +154,7 @@ class OpeningRecord:
     speed: float
     period_s: float
     budget_s: float
+    site_content: Mapping[str, Any] = field(default_factory=dict)
+    """The site file as loaded (`Site.as_dict`): units, limits and tags for whoever reads the journal
+    later, without the file. A site file never holds a password."""
     schema: int = 1
