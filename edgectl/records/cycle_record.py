@@ -155,6 +155,6 @@ class OpeningRecord:
     period_s: float
     budget_s: float
     site_content: Mapping[str, Any] = field(default_factory=dict)
-    """The site file as loaded (`Site.as_dict`): units, limits and tags for whoever reads the journal
-    later, without the file. A site file never holds a password."""
+    """The site file as loaded (`Site.as_dict`): units, limits and tags for whoever reads the
+    journal later, without the file. A site file never holds a password."""
     schema: int = 1
