@@ -113,7 +113,8 @@ class SolvedColumn:
     def gains(self, names: Sequence[str]) -> Vector:
         """Steady gains of the products, per kmol/h or mole fraction or kW."""
         a, b, c = self.linearise(names)
-        return -c @ np.linalg.solve(a, b)
+        gains: Vector = -c @ np.linalg.solve(a, b)
+        return gains
 
     def with_inputs(self, inputs: Inputs) -> SolvedColumn:
         """The steady state that other inputs lead to, by Newton's method."""
@@ -181,7 +182,8 @@ def gains_per_kmol_min(column: SolvedColumn, names: Sequence[str]) -> Vector:
     """Gains as the source states them: flows in kmol/min, duty as boil-up."""
     scale = {"reflux_kmol_h": MIN_PER_H, "feed_kmol_h": MIN_PER_H, "feed_light": 1.0,
              "duty_kw": MIN_PER_H / boil_up_kmol_h(1.0)}  # fmt: skip
-    return column.gains(names) * np.array([scale[name] for name in names])
+    per_kmol_min: Vector = column.gains(names) * np.array([scale[name] for name in names])
+    return per_kmol_min
 
 
 def test_reflux_and_boil_up(column_a: SolvedColumn, reference: dict[str, Any]) -> None:

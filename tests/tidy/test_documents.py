@@ -81,7 +81,7 @@ def path_problems(text: str, root: Path) -> Iterator[str]:
             # What a run or an installation makes is not in the checkout.
             if first in (".venv", "runs") or not bases:
                 continue
-            if not any((base / path).exists() for base in bases):
+            if not any((base / path).exists() or is_empty_room(base, path) for base in bases):
                 yield f"`{path}` does not exist"
         for module in MODULE.findall(code):
             if module.split(".")[0] in NOT_OURS:
@@ -89,6 +89,13 @@ def path_problems(text: str, root: Path) -> Iterator[str]:
             place = root.joinpath(*module.split("."))
             if not (place.with_suffix(".py").is_file() or (place / "__main__.py").is_file()):
                 yield f"`python -m {module}` cannot run"
+
+
+def is_empty_room(base: Path, path: str) -> bool:
+    """A file of a room that nobody has built yet."""
+    # TODO(second round): drop this tolerance once every room stands.
+    room = (base / path).parent
+    return room.is_dir() and not any(room.iterdir())
 
 
 def stray_words(text: str) -> Iterator[str]:
