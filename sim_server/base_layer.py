@@ -34,13 +34,15 @@ SLAVES: Final[Mapping[str, str]] = {
     "FIC-2105": "LIC-2113",
     "FIC-2106": "LIC-2114",
 }
+PV_TAG: Final[Mapping[str, str]] = {"TIC-2107": "TI-2107"}
+"""The instrument that measures for a loop, where the names differ."""
 READ_ONLY: Final = frozenset(("FIC-2101",))
 """Set upstream of this column."""
 
 
 @dataclass(frozen=True, slots=True)
-class StartFlows:
-    """True flows at the start [kg/h]."""
+class Flows:
+    """True flows [kg/h]."""
 
     feed: float
     reflux: float
@@ -58,12 +60,12 @@ class BaseLayer:
         Setpoints at the start, steam properties.
     ranges : mapping
         Instrument range (low, high) by tag [tag's unit].
-    flows : StartFlows
+    flows : Flows
         True flows of the steady state at the start.
     """
 
     def __init__(
-        self, data: PlantData, ranges: Mapping[str, tuple[float, float]], flows: StartFlows
+        self, data: PlantData, ranges: Mapping[str, tuple[float, float]], flows: Flows
     ) -> None:
         base = data.base_layer
         self.ranges: dict[str, tuple[float, float]] = {
@@ -82,12 +84,10 @@ class BaseLayer:
         self.drum_pressure_kpa = base.drum_pressure_kpa
         self.filtered_feed_kg_h = flows.feed
         self._start_feed_kg_h = flows.feed
-        self.pv: dict[str, float] = {}
+        self.measured_ratio = base.reflux_ratio
         self.loops, self.valves = self._build(data, flows)
 
-    def _build(
-        self, data: PlantData, flows: StartFlows
-    ) -> tuple[dict[str, Loop], dict[str, Valve]]:
+    def _build(self, data: PlantData, flows: Flows) -> tuple[dict[str, Loop], dict[str, Valve]]:
         base = data.base_layer
         flow_of = {
             "FIC-2103": flows.reflux,
@@ -103,7 +103,7 @@ class BaseLayer:
             stiction = STICTION_PCT if tag in ("FIC-2103", "FIC-2104") else 0.0
             valves[tag] = Valve(full, opening, stiction)
             loops[tag] = Loop(
-                tag, 30.0 / full, 12.0, flow, opening, Mode.CASCADE, ALL_MODES, filter_s=3.0
+                tag, 50.0 / full, 8.0, flow, opening, Mode.CASCADE, ALL_MODES, filter_s=3.0
             )
         steam_pct = 100.0 * flows.steam / self.ranges["FIC-2104"][1]
         kg_h_per_kw = 3600.0 / data.steam.latent_heat_kj_kg
@@ -146,17 +146,15 @@ class BaseLayer:
         condenser_duty_kw : float
             For the position of the cooling valve that PIC-2111 shows [kW].
         """
-        self.pv = {tag: measured[tag] for tag in self.ranges if tag in measured}
-        self.pv["TIC-2107"] = measured["TI-2107"]
         self._feed(feed_factor)
         self._pressure(condenser_duty_kw)
-        self._ratio()
+        self._ratio(measured["FIC-2101"], measured["FIC-2103"])
         for slave, master in SLAVES.items():
-            self._cascade(master, slave)
+            self._cascade(
+                self.loops[master], self.loops[slave], measured[PV_TAG.get(master, master)]
+            )
         for tag, valve in self.valves.items():
-            loop = self.loops[tag]
-            at_stop = valve.high < 100.0 and loop.output >= valve.high
-            valve.move(loop.scan(self.pv[tag], hold_high=at_stop and loop.output >= 100.0))
+            valve.move(self.loops[tag].scan(measured[tag]))
 
     def _feed(self, factor: float) -> None:
         loop = self.loops["FIC-2101"]
@@ -171,37 +169,33 @@ class BaseLayer:
         self.drum_pressure_kpa = keep * self.drum_pressure_kpa + (1.0 - keep) * loop.setpoint
         loop.output = min(100.0, max(0.0, condenser_duty_kw / 80.0))
 
-    def _ratio(self) -> None:
+    def _ratio(self, measured_feed: float, measured_reflux: float) -> None:
         keep = math.exp(-1.0 / RATIO_FILTER_S)
-        measured_feed = self.pv["FIC-2101"]
         self.filtered_feed_kg_h = keep * self.filtered_feed_kg_h + (1.0 - keep) * measured_feed
         feed = max(1.0, self.filtered_feed_kg_h)
         station, reflux = self.loops["FFIC-2103"], self.loops["FIC-2103"]
         high = self.ranges["FIC-2103"][1]
         if reflux.mode is Mode.CASCADE:
-            reflux.move_setpoint(min(high, station.setpoint * feed))
+            reflux.setpoint = min(high, station.setpoint * feed)
         else:
             if reflux.manual:
                 reflux.setpoint = reflux.filtered
             # The station follows the loop, so that the return to cascade is bumpless.
             station.setpoint = min(RATIO_HIGH, reflux.setpoint / feed)
         station.output = 100.0 * reflux.setpoint / high
-        self.pv["FFIC-2103"] = min(RATIO_HIGH, self.pv["FIC-2103"] / feed)
+        self.measured_ratio = min(RATIO_HIGH, measured_reflux / feed)
 
-    def _cascade(self, master_tag: str, slave_tag: str) -> None:
-        master, slave = self.loops[master_tag], self.loops[slave_tag]
-        valve = self.valves[slave_tag]
-        high = self.ranges[slave_tag][1]
+    def _cascade(self, master: Loop, slave: Loop, measured: float) -> None:
+        high = self.ranges[slave.tag][1]
         output = master.scan(
-            self.pv[master_tag],
-            hold_high=slave.output >= min(100.0, valve.high),
-            hold_low=slave.output <= 0.0,
+            measured, hold_high=slave.output >= 100.0, hold_low=slave.output <= 0.0
         )
         if slave.mode is Mode.CASCADE:
-            slave.move_setpoint(output * high / 100.0)
+            slave.setpoint = output * high / 100.0
             return
         if slave.manual:
             slave.setpoint = min(high, max(0.0, slave.filtered))
+        # The slave does not listen: be ready for its return without a bump.
         master.follow(100.0 * slave.setpoint / high)
 
     def limit_valve(self, tag: str, high: float | None) -> None:

@@ -45,8 +45,6 @@ FRANCIS_M05_S: Final = 1.84
 DOWNCOMER_LOSS_M: Final = 0.02
 """Head lost under the downcomer apron, taken as constant."""
 MIN_HOLDUP_KMOL: Final = 1e-3
-DRY_END_KMOL: Final = 1.0
-"""Below this holdup the outflow of drum and sump fades out: a pump loses suction."""
 
 
 @dataclass(slots=True)
@@ -185,14 +183,12 @@ class Column:
         y_equilibrium = self._bubble_point(x)
         y = self._murphree(y_equilibrium, inputs)
 
-        drum_fade = min(1.0, float(total[0]) / DRY_END_KMOL)
-        sump_fade = min(1.0, float(total[-1]) / DRY_END_KMOL)
         liquid, clear_m, dry_m, mass_density = self._weirs(total, x, y)
-        liquid[0] = inputs.reflux_kmol_s * drum_fade
-        liquid[-1] = inputs.bottoms_kmol_s * sump_fade
+        liquid[0] = inputs.reflux_kmol_s
+        liquid[-1] = inputs.bottoms_kmol_s
 
         h_liquid, h_vapour = self._enthalpies(x, y)
-        vapour = self._energy_balance(liquid, h_liquid, h_vapour, inputs, sump_fade)
+        vapour = self._energy_balance(liquid, h_liquid, h_vapour, inputs)
         drop_pa = mass_density * GRAVITY_M_S2 * (dry_m + clear_m) + GRAVITY_M_S2 * 12.5
         self._vapour_kmol_s = vapour
         self._pressure_pa = self._profile(inputs.drum_pressure_pa, drop_pa)
@@ -204,9 +200,8 @@ class Column:
         rate[:, :-1] += up[:, 1:]
         rate[0, column.feed_tray] += inputs.feed_kmol_s
         rate[1, column.feed_tray] += inputs.feed_kmol_s * inputs.feed_x
-        distillate = inputs.distillate_kmol_s * drum_fade
-        rate[0, 0] -= distillate
-        rate[1, 0] -= distillate * x[0]
+        rate[0, 0] -= inputs.distillate_kmol_s
+        rate[1, 0] -= inputs.distillate_kmol_s * x[0]
 
         condensate = h_vapour[1] - self._drum_liquid_enthalpy(float(y[1]))
         return rate, Stages(
@@ -357,7 +352,6 @@ class Column:
         h_liquid: Array,
         h_vapour: Array,
         inputs: Inputs,
-        sump_fade: float,
     ) -> Array:
         """Vapour flows from the stages' quasi-steady energy balances, reboiler first."""
         methanol, water = self._pure_liquid_enthalpies(inputs.feed_temperature_k)
@@ -366,7 +360,7 @@ class Column:
         source = np.full(self._count, -self._loss_kw)
         source[1:] += liquid[:-1] * (h_liquid[:-1] - h_liquid[1:])
         source[feed_tray] += inputs.feed_kmol_s * (h_feed - h_liquid[feed_tray])
-        source[-1] += inputs.duty_kw * sump_fade
+        source[-1] += inputs.duty_kw
         latent = h_vapour - h_liquid
         carried = np.zeros(self._count)
         carried[:-1] = (h_vapour[1:] - h_liquid[:-1]) / latent[:-1]

@@ -27,6 +27,8 @@ class Story(StrEnum):
     """Feed up, then richer, then colder, while the trays foul."""
     CALM = "calm"
     """The wander alone."""
+    FEED_CUT = "feed-cut"
+    """A quarter of the feed lost after ten minutes."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -81,7 +83,7 @@ class Disturbances:
     """
 
     def __init__(self, seed: int, story: Story) -> None:
-        self._default = story is Story.DEFAULT
+        self._story = story
         self._efficiency_fall = uniform(seed, "efficiency fall", 0.02, 0.03)
         self._flow = Wander(seed, "feed flow", 0.003, 3.0 * MINUTE_S)
         self._composition = Wander(seed, "feed composition", 0.001, 30.0 * MINUTE_S)
@@ -90,9 +92,7 @@ class Disturbances:
 
     def next(self, time_s: float) -> Conditions:
         """Conditions for the second that begins at `time_s`; call once per plant second."""
-        flow, composition, temperature, fouling = (
-            self._story(time_s) if self._default else (0.0, 0.0, 0.0, 0.0)
-        )
+        flow, composition, temperature, fouling = self._events(time_s)
         return Conditions(
             feed_setpoint_factor=1.0 + flow,
             feed_wander_factor=1.0 + self._flow.next(),
@@ -102,7 +102,12 @@ class Disturbances:
             efficiency_shift=-fouling,
         )
 
-    def _story(self, time_s: float) -> tuple[float, float, float, float]:
+    def _events(self, time_s: float) -> tuple[float, float, float, float]:
+        """Shifts of feed flow [-], feed methanol [-], feed temperature [K] and efficiency [-]."""
+        if self._story is Story.CALM:
+            return 0.0, 0.0, 0.0, 0.0
+        if self._story is Story.FEED_CUT:
+            return -0.25 * _edge(time_s, 10.0), 0.0, 0.0, 0.0
         flow = 0.08 * (_edge(time_s, 20.0) - _edge(time_s, 160.0))
         composition = 0.025 * (_edge(time_s, 60.0) - _edge(time_s, 140.0))
         temperature = -8.0 * _edge(time_s, 100.0)

@@ -98,12 +98,6 @@ class Loop:
         self.output = output
         self._integral = output - self._gain * (self.setpoint - self.filtered)
 
-    def move_setpoint(self, setpoint: float, bumpless: bool = False) -> None:
-        """A new setpoint; with `bumpless` the output does not jump."""
-        if bumpless:
-            self._integral -= self._gain * (setpoint - self.setpoint)
-        self.setpoint = setpoint
-
 
 class Valve:
     """A control valve with a lag, sticking a little, and an end stop.

@@ -11,7 +11,7 @@ from collections.abc import Mapping
 from types import MappingProxyType
 from typing import Final
 
-from sim_server.base_layer import READ_ONLY, BaseLayer, StartFlows
+from sim_server.base_layer import READ_ONLY, BaseLayer, Flows
 from sim_server.column import Inputs
 from sim_server.disturbances import Disturbances, Story
 from sim_server.instruments import Analyser, Transmitter
@@ -33,6 +33,8 @@ LOOP_DESCRIPTIONS: Final[Mapping[str, str]] = {
     "FFIC-2103": "reflux to feed ratio, kg/kg",
 }
 KELVIN: Final = 273.15
+DRY_END_KMOL: Final = 1.0
+"""Holdup below which the outflow of drum and sump fades out."""
 
 
 class SimulatedPlant:
@@ -53,7 +55,6 @@ class SimulatedPlant:
         self._stages = state.stages
         self._time_s = 0
         self._disturbances = Disturbances(seed, Story(story))
-        self._conditions = Disturbances(seed, Story.CALM).next(0.0)
         self._feed_methanol_wt = self._data.feed.methanol_wt
         self._duty_kw = state.inputs.duty_kw
         self._duty_keep = math.exp(-1.0 / self._data.steam.lag_s)
@@ -68,9 +69,6 @@ class SimulatedPlant:
             entry.tag: Analyser(seed, entry, self._analysed(entry.tag))
             for entry in self._data.analysers
         }
-        self._base.pv = {tag: self._readings.get(tag, 0.0) for tag in self._base.ranges}
-        self._base.pv["TIC-2107"] = self._readings["TI-2107"]
-        self._base.pv["FFIC-2103"] = self._data.base_layer.reflux_ratio
         self._specs = self._build_specs()
         self._writable = {spec.name for spec in self._specs if spec.board_writable}
         self._signals: Mapping[str, Signal] | None = None
@@ -121,14 +119,17 @@ class SimulatedPlant:
         data, base = self._data, self._base
         conditions = self._disturbances.next(float(self._time_s))
         base.scan(self._readings, conditions.feed_setpoint_factor, self._stages.condenser_duty_kw)
-        flows = StartFlows(
+        # A pump loses suction as its vessel runs dry, and a dry reboiler takes up no heat.
+        drum_share = min(1.0, float(self._holdup[0, 0]) / DRY_END_KMOL)
+        sump_share = min(1.0, float(self._holdup[0, -1]) / DRY_END_KMOL)
+        flows = Flows(
             feed=base.feed_kg_h * conditions.feed_wander_factor,
-            reflux=base.valves["FIC-2103"].flow,
+            reflux=base.valves["FIC-2103"].flow * drum_share,
             steam=base.valves["FIC-2104"].flow,
-            distillate=base.valves["FIC-2105"].flow,
-            bottoms=base.valves["FIC-2106"].flow,
+            distillate=base.valves["FIC-2105"].flow * drum_share,
+            bottoms=base.valves["FIC-2106"].flow * sump_share,
         )
-        steam_kw = flows.steam * data.steam.latent_heat_kj_kg / 3600.0
+        steam_kw = flows.steam * data.steam.latent_heat_kj_kg / 3600.0 * sump_share
         self._duty_kw = self._duty_keep * self._duty_kw + (1.0 - self._duty_keep) * steam_kw
         self._feed_methanol_wt = data.feed.methanol_wt + conditions.feed_methanol_shift_wt
         feed_x = mass_to_mole(self._feed_methanol_wt, data)
@@ -154,11 +155,11 @@ class SimulatedPlant:
         for tag, analyser in self._analysers.items():
             analyser.advance(self._analysed(tag), self._time_s)
 
-    def _start_flows(self, state: SteadyState) -> StartFlows:
+    def _start_flows(self, state: SteadyState) -> Flows:
         data, inputs = self._data, state.inputs
         drum_mass = 3600.0 * molar_mass_kg_kmol(float(state.stages.x[0]), data)
         sump_mass = 3600.0 * molar_mass_kg_kmol(float(state.stages.x[-1]), data)
-        return StartFlows(
+        return Flows(
             feed=data.feed.flow_kg_h,
             reflux=inputs.reflux_kmol_s * drum_mass,
             steam=inputs.duty_kw * 3600.0 / data.steam.latent_heat_kj_kg,
@@ -201,15 +202,12 @@ class SimulatedPlant:
     def _collect_signals(self) -> dict[str, Signal]:
         now_s = float(self._time_s)
         values = {f"{tag}.PV": value for tag, value in self._readings.items()}
+        values["TIC-2107.PV"] = self._readings["TI-2107"]
+        values["FFIC-2103.PV"] = self._base.measured_ratio
         for tag, loop in self._base.loops.items():
-            values[f"{tag}.PV"] = self._base.pv[tag]
             values[f"{tag}.SP"] = loop.setpoint
             values[f"{tag}.OP"] = loop.output
             values[f"{tag}.MODE"] = float(loop.mode)
-        for tag in self._readings:
-            # The loops saw the second before; what is shown is the latest reading.
-            values[f"{tag}.PV"] = self._readings[tag]
-        values["TIC-2107.PV"] = self._readings["TI-2107"]
         signals = {name: Signal(value, GOOD, now_s) for name, value in values.items()}
         signals.update((f"{tag}.PV", analyser.result) for tag, analyser in self._analysers.items())
         return signals

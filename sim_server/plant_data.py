@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import tomllib
 from dataclasses import dataclass
-from importlib.resources import files
+from pathlib import Path
 from typing import Any, Final
 
 from edgectl.properties.activity import Nrtl
@@ -12,6 +12,7 @@ from edgectl.properties.density import LiquidDensity
 from edgectl.properties.enthalpy import HeatCapacity, HeatOfVaporisation
 from edgectl.properties.vapour_pressure import Antoine
 
+DATA: Final = Path(__file__).parent / "data"
 J_PER_CAL: Final = 4.184
 
 
@@ -137,8 +138,7 @@ class PlantData:
 
 def load_plant_data() -> PlantData:
     """The packaged methanol/water column."""
-    text = files("sim_server").joinpath("data/methanol_water.toml").read_text(encoding="utf-8")
-    raw = tomllib.loads(text)
+    raw = tomllib.loads((DATA / "methanol_water.toml").read_text(encoding="utf-8"))
     return PlantData(
         name=raw["scenario"]["name"],
         column=ColumnData(**raw["column"]),

@@ -11,16 +11,14 @@ import argparse
 import tomllib
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
-from importlib.resources import as_file, files
-from pathlib import Path
 from typing import Final
 
 import numpy as np
 
 from sim_server.column import Array, Column, Inputs, Stages
-from sim_server.plant_data import PlantData, load_plant_data
+from sim_server.plant_data import DATA, PlantData, load_plant_data
 
-START_FILE: Final = "data/methanol_water_start.toml"
+START_FILE: Final = DATA / "methanol_water_start.toml"
 TOLERANCE: Final = 1e-9
 LARGEST_STEP: Final = 1.0
 """Newton steps are cut so that no logarithmic unknown moves further than this."""
@@ -172,7 +170,7 @@ def solve(
 
 def operating_point(data: PlantData) -> SteadyState:
     """The steady state of the data file's feed and setpoints, from the packaged start."""
-    start = tomllib.loads(files("sim_server").joinpath(START_FILE).read_text(encoding="utf-8"))
+    start = tomllib.loads(START_FILE.read_text(encoding="utf-8"))
     feed, base = data.feed, data.base_layer
     total = np.array(start["total_kmol"])
     holdup = np.stack((total, total * np.array(start["methanol_x"])))
@@ -278,8 +276,7 @@ def main(arguments: Sequence[str] | None = None) -> None:
     state = operating_point(data)
     text = start_text(state)
     if options.write:
-        with as_file(files("sim_server")) as package:
-            Path(package, START_FILE).write_text(text, encoding="utf-8")
+        START_FILE.write_text(text, encoding="utf-8")
     print(text)  # noqa: T201  the command's output
 
 

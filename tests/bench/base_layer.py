@@ -24,8 +24,8 @@ DISTILLATE_LIMIT_PCT = 0.5
 SAMPLE_S = 30
 GRID = tuple(
     (ratio, temperature)
-    for ratio in (0.440, 0.445, 0.450, 0.455, 0.461)
-    for temperature in (100.0, 101.0, 102.0, 103.0)
+    for ratio in (0.440, 0.4425, 0.445, 0.450)
+    for temperature in (100.0, 102.0)
 )
 
 
@@ -141,12 +141,12 @@ def main() -> None:
             runs = all_seeds(ratio, temperature)
             worst = min(r.in_spec_pct for r in runs)
             energy = _mean([r.kwh_per_t for r in runs])
-            print(f"  {ratio:.3f} {temperature:5.1f} -> {worst:5.1f} %  {energy:.1f}")
+            print(f"  {ratio:.4f} {temperature:5.1f} -> {worst:5.1f} %  {energy:.1f}")
             if worst >= 98.0 and (best is None or energy < best[2]):
                 best = (ratio, temperature, energy)
         if best is not None:
             print_runs(
-                f"tightest base layer of hindsight: {best[0]:.3f}, {best[1]:g} degC",
+                f"tightest base layer of hindsight: {best[0]:.4f}, {best[1]:g} degC",
                 all_seeds(best[0], best[1]),
             )
 
