@@ -3,6 +3,10 @@
 Dataclasses become objects, tuples become lists, enums their words. JSON has no
 NaN or infinity (RFC 8259, section 6): they travel as {"float": "nan"},
 {"float": "inf"} and {"float": "-inf"}.
+
+Two pairs of doors: `dumps` and `loads` for records, `canonical` and `parse` for
+what is plain JSON already. There is one text for one value, so a hash of the
+text is a hash of the value.
 """
 
 from __future__ import annotations
@@ -12,7 +16,7 @@ import json
 import math
 import types
 import typing
-from collections.abc import Mapping
+from collections.abc import Callable, Iterator, Mapping
 from enum import Enum
 from functools import lru_cache
 from typing import Any, TypeVar, Union, get_args, get_origin
@@ -28,138 +32,269 @@ class EncodingError(ValueError):
     """The text is not the record it should be; the message names the place."""
 
 
-def to_json(value: object) -> Json:
-    """Plain JSON for a record, a container of records or a number."""
-    if value is None or isinstance(value, bool | str | int):
-        return value.value if isinstance(value, Enum) else value
-    if isinstance(value, float):
-        return value if math.isfinite(value) else {"float": _non_finite_name(value)}
-    if isinstance(value, Enum):
-        return to_json(value.value)
-    if dataclasses.is_dataclass(value) and not isinstance(value, type):
-        return {f.name: to_json(getattr(value, f.name)) for f in dataclasses.fields(value)}
-    if isinstance(value, Mapping):
-        return {str(key): to_json(item) for key, item in value.items()}
-    if isinstance(value, list | tuple):
-        return [to_json(item) for item in value]
-    raise EncodingError(f"cannot encode a {type(value).__name__}")
-
-
 def dumps(value: object) -> bytes:
-    """Canonical UTF-8 JSON: sorted keys, no spaces, shortest round-trip floats."""
-    text = json.dumps(
-        to_json(value), sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False
-    )
-    return text.encode("utf-8")
+    """Canonical UTF-8 JSON of a record. Raises EncodingError."""
+    return canonical(to_json(value))
 
 
 def loads(kind: type[T], data: bytes) -> T:
     """The record of type `kind` in `data`. Raises EncodingError, naming the place."""
+    record: T = from_json(kind, parse(data))
+    return record
+
+
+def canonical(value: Json) -> bytes:
+    """Canonical UTF-8 JSON: sorted keys, no spaces, shortest round-trip floats.
+
+    Unlike `dumps` it refuses NaN and infinities: in plain JSON they are a
+    mistake of the caller. Raises EncodingError, naming the place.
+    """
     try:
-        raw = json.loads(data)
+        text = json.dumps(
+            value, sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False
+        )
+        return text.encode("utf-8")
+    except (TypeError, ValueError, RecursionError) as error:
+        place = next(_faults(value, "$"), None)
+        raise EncodingError(place or f"$: {error}") from error
+
+
+def parse(data: bytes) -> Json:
+    """Plain JSON, strictly: UTF-8, no NaN or infinity, no key twice. Raises EncodingError."""
+    try:
+        text = data.decode("utf-8")
+        value: Json = json.loads(text, parse_constant=_refuse, object_pairs_hook=_object)
     except (ValueError, RecursionError) as error:
         raise EncodingError(f"not JSON: {error}") from error
-    return from_json(kind, raw)
+    return value
+
+
+def to_json(value: object, where: str = "$") -> Json:
+    """Plain JSON for a record, a container of records or a number. Raises EncodingError."""
+    if value is None or isinstance(value, bool | str | int):
+        return value.value if isinstance(value, Enum) else value
+    if isinstance(value, float):
+        return float(value) if math.isfinite(value) else {"float": _non_finite_name(value)}
+    if isinstance(value, Enum):
+        return to_json(value.value, where)
+    if dataclasses.is_dataclass(value) and not isinstance(value, type):
+        return {
+            name: to_json(getattr(value, name), f"{where}.{name}")
+            for name in _field_names(type(value))
+        }
+    if isinstance(value, Mapping):
+        return {_key(key, where): to_json(item, f"{where}.{key}") for key, item in value.items()}
+    if isinstance(value, list | tuple):
+        if _all_finite_floats(value):
+            return list(value)
+        return [to_json(item, f"{where}[{i}]") for i, item in enumerate(value)]
+    raise EncodingError(f"{where}: cannot encode a {type(value).__name__}")
 
 
 def from_json(kind: Any, raw: Any, where: str = "$") -> Any:
     """Build `kind` from plain JSON, checking every field. Raises EncodingError."""
-    origin = get_origin(kind)
-    if kind is Any or kind is object:
-        return raw
-    if origin in (Union, types.UnionType):
-        return _from_union(get_args(kind), raw, where)
-    if kind is type(None):
-        return _expect(raw is None, None, raw, where, "null")
-    if kind is float:
-        return _float(raw, where)
-    if kind in (bool, str):
-        return _expect(isinstance(raw, kind), raw, raw, where, kind.__name__)
-    if kind is int:
-        return _expect(isinstance(raw, int) and not isinstance(raw, bool), raw, raw, where, "integer")
-    if isinstance(kind, type) and issubclass(kind, Enum):
-        try:
-            return kind(raw)
-        except ValueError as error:
-            raise EncodingError(f"{where}: {error}") from error
-    if origin is tuple:
-        return _from_tuple(get_args(kind), raw, where)
-    if origin is not None and issubclass(origin, Mapping):
-        if not isinstance(raw, dict):
-            raise EncodingError(f"{where}: expected an object, found {type(raw).__name__}")
-        item = get_args(kind)[1]
-        return {key: from_json(item, entry, f"{where}.{key}") for key, entry in raw.items()}
-    if dataclasses.is_dataclass(kind):
-        return _from_object(kind, raw, where)
-    raise EncodingError(f"{where}: no rule for {kind!r}")
+    return _decoder(kind)(raw, where)
+
+
+# -- encoding ---------------------------------------------------------------------------
+
+
+@lru_cache(maxsize=128)
+def _field_names(kind: type) -> tuple[str, ...]:
+    return tuple(f.name for f in dataclasses.fields(kind))
+
+
+def _key(key: object, where: str) -> str:
+    if not isinstance(key, str):
+        # 1 and "1" would become the same key.
+        raise EncodingError(f"{where}: a key must be text, found {key!r}")
+    return str(key.value) if isinstance(key, Enum) else key
 
 
 def _non_finite_name(value: float) -> str:
     return "nan" if math.isnan(value) else ("inf" if value > 0 else "-inf")
 
 
-def _expect(good: bool, value: Any, raw: Any, where: str, what: str) -> Any:
-    if not good:
-        raise EncodingError(f"{where}: expected {what}, found {type(raw).__name__}")
-    return value
+def _all_finite_floats(items: list[Any] | tuple[Any, ...]) -> bool:
+    """True for the rows of numbers that make up most of a record: they need no second look."""
+    return all(type(item) is float and math.isfinite(item) for item in items)
+
+
+def _faults(value: object, where: str) -> Iterator[str]:
+    """Why a value is not plain JSON, place by place."""
+    if isinstance(value, float) and not math.isfinite(value):
+        yield f"{where}: {value} is not JSON"
+    elif isinstance(value, str) and any(0xD800 <= ord(sign) <= 0xDFFF for sign in value):
+        yield f"{where}: half a surrogate pair is not text"
+    elif isinstance(value, dict):
+        for key, item in value.items():
+            if not isinstance(key, str):
+                yield f"{where}: a key must be text, found {key!r}"
+            yield from _faults(key, f"{where}, key {key!r}")
+            yield from _faults(item, f"{where}.{key}")
+    elif isinstance(value, list | tuple):
+        for i, item in enumerate(value):
+            yield from _faults(item, f"{where}[{i}]")
+    elif value is not None and not isinstance(value, bool | int | float | str):
+        yield f"{where}: a {type(value).__name__} is not JSON"
+
+
+# -- decoding ---------------------------------------------------------------------------
+
+
+def _refuse(constant: str) -> float:
+    raise ValueError(f"{constant} is not JSON")
+
+
+def _object(pairs: list[tuple[str, Any]]) -> dict[str, Any]:
+    found = dict(pairs)
+    if len(found) != len(pairs):
+        raise ValueError("an object has a key twice")
+    return found
+
+
+Decode = Callable[[Any, str], Any]
+
+
+# A closed set: one entry per type that occurs in the records.
+@lru_cache(maxsize=512)
+def _decoder(kind: Any) -> Decode:
+    """How to build `kind`, worked out once per type: a plan has a thousand numbers."""
+    origin = get_origin(kind)
+    if kind is Any or kind is object:
+        return lambda raw, where: raw
+    if kind is float:
+        return _float
+    if kind is type(None) or kind in (bool, int, str):
+        return _plain(kind)
+    if origin in (Union, types.UnionType):
+        return _union(get_args(kind))
+    if isinstance(kind, type) and issubclass(kind, Enum):
+        return _enum(kind)
+    if origin is tuple:
+        return _tuple(get_args(kind))
+    if origin is not None and issubclass(origin, Mapping):
+        return _mapping(get_args(kind)[1])
+    if dataclasses.is_dataclass(kind):
+        return _record(kind)
+    raise EncodingError(f"no rule for {kind!r}")
+
+
+def _expected(what: str, raw: Any, where: str) -> EncodingError:
+    return EncodingError(f"{where}: expected {what}, found {type(raw).__name__}")
 
 
 def _float(raw: Any, where: str) -> float:
-    if isinstance(raw, bool):
-        raise EncodingError(f"{where}: expected a number, found bool")
-    if isinstance(raw, int | float):
-        return float(raw)
-    if isinstance(raw, dict) and set(raw) == {"float"} and raw["float"] in _NON_FINITE:
-        return _NON_FINITE[raw["float"]]
-    raise EncodingError(f"{where}: expected a number, found {type(raw).__name__}")
-
-
-def _from_union(kinds: tuple[Any, ...], raw: Any, where: str) -> Any:
-    if raw is None and type(None) in kinds:
-        return None
-    rest = [kind for kind in kinds if kind is not type(None)]
-    if len(rest) == 1:
-        return from_json(rest[0], raw, where)
-    for kind in rest:
+    if isinstance(raw, int | float) and not isinstance(raw, bool):
         try:
-            return from_json(kind, raw, where)
-        except EncodingError:
-            continue
-    raise EncodingError(f"{where}: fits none of the allowed kinds")
+            value = float(raw)
+        except OverflowError as error:
+            raise EncodingError(f"{where}: too large for a float") from error
+        # 1e999 parses to infinity; an infinity that is meant says so in words.
+        if math.isfinite(value):
+            return value
+    if isinstance(raw, dict) and set(raw) == {"float"}:
+        word = raw["float"]
+        if isinstance(word, str) and word in _NON_FINITE:
+            return _NON_FINITE[word]
+    raise _expected("a number", raw, where)
 
 
-def _from_tuple(kinds: tuple[Any, ...], raw: Any, where: str) -> tuple[Any, ...]:
-    if not isinstance(raw, list):
-        raise EncodingError(f"{where}: expected a list, found {type(raw).__name__}")
-    if len(kinds) == 2 and kinds[1] is Ellipsis:
-        return tuple(from_json(kinds[0], item, f"{where}[{i}]") for i, item in enumerate(raw))
-    if len(kinds) != len(raw):
-        raise EncodingError(f"{where}: expected {len(kinds)} items, found {len(raw)}")
-    return tuple(
-        from_json(kind, item, f"{where}[{i}]")
-        for i, (kind, item) in enumerate(zip(kinds, raw, strict=True))
-    )
+def _plain(kind: type) -> Decode:
+    name = "null" if kind is type(None) else {"int": "integer"}.get(kind.__name__, kind.__name__)
+
+    def decode(raw: Any, where: str) -> Any:
+        if not isinstance(raw, kind) or (kind is int and isinstance(raw, bool)):
+            raise _expected(name, raw, where)
+        return raw
+
+    return decode
 
 
-@lru_cache(maxsize=128)
-def _hints(kind: type) -> dict[str, Any]:
-    return typing.get_type_hints(kind)
+def _enum(kind: type[Enum]) -> Decode:
+    def decode(raw: Any, where: str) -> Enum:
+        try:
+            return kind(raw)
+        except ValueError as error:
+            raise EncodingError(f"{where}: {error}") from error
+
+    return decode
 
 
-def _from_object(kind: Any, raw: Any, where: str) -> Any:
-    if not isinstance(raw, dict):
-        raise EncodingError(f"{where}: expected an object, found {type(raw).__name__}")
-    hints = _hints(kind)
-    unknown = sorted(set(raw) - set(hints))
-    if unknown:
-        raise EncodingError(f"{where}: unknown field {unknown[0]!r}")
-    missing = [
+def _union(kinds: tuple[Any, ...]) -> Decode:
+    optional = type(None) in kinds
+    rest = [kind for kind in kinds if kind is not type(None)]
+    only = _decoder(rest[0]) if len(rest) == 1 else None
+
+    def decode(raw: Any, where: str) -> Any:
+        if raw is None and optional:
+            return None
+        if only is not None:
+            return only(raw, where)
+        problems = []
+        for kind in rest:
+            try:
+                return _decoder(kind)(raw, where)
+            except EncodingError as error:
+                problems.append(f"as {getattr(kind, '__name__', kind)}: {error}")
+        raise EncodingError(f"{where}: fits none of the allowed kinds ({'; '.join(problems)})")
+
+    return decode
+
+
+def _tuple(kinds: tuple[Any, ...]) -> Decode:
+    uniform = len(kinds) == 2 and kinds[1] is Ellipsis
+
+    def decode(raw: Any, where: str) -> tuple[Any, ...]:
+        if not isinstance(raw, list):
+            raise _expected("a list", raw, where)
+        if uniform and kinds[0] is float and _all_finite_floats(raw):
+            return tuple(raw)
+        if not uniform and len(kinds) != len(raw):
+            raise EncodingError(f"{where}: expected {len(kinds)} items, found {len(raw)}")
+        each = [kinds[0]] * len(raw) if uniform else kinds
+        return tuple(
+            _decoder(kind)(item, f"{where}[{i}]")
+            for i, (kind, item) in enumerate(zip(each, raw, strict=True))
+        )
+
+    return decode
+
+
+def _mapping(item: Any) -> Decode:
+    decode_item = _decoder(item)
+
+    def decode(raw: Any, where: str) -> dict[str, Any]:
+        if not isinstance(raw, dict):
+            raise _expected("an object", raw, where)
+        return {key: decode_item(entry, f"{where}.{key}") for key, entry in raw.items()}
+
+    return decode
+
+
+def _record(kind: Any) -> Decode:
+    hints = typing.get_type_hints(kind)
+    fields = {f.name: _decoder(hints[f.name]) for f in dataclasses.fields(kind)}
+    required = [
         f.name
         for f in dataclasses.fields(kind)
-        if f.name not in raw
-        and f.default is dataclasses.MISSING
-        and f.default_factory is dataclasses.MISSING
+        if f.default is dataclasses.MISSING and f.default_factory is dataclasses.MISSING
     ]
-    if missing:
-        raise EncodingError(f"{where}: missing field {missing[0]!r}")
-    return kind(**{name: from_json(hints[name], raw[name], f"{where}.{name}") for name in raw})
+
+    def decode(raw: Any, where: str) -> Any:
+        if not isinstance(raw, dict):
+            raise _expected("an object", raw, where)
+        for name in raw:
+            if name not in fields:
+                raise EncodingError(f"{where}: unknown field {name!r}")
+        for name in required:
+            if name not in raw:
+                raise EncodingError(f"{where}: missing field {name!r}")
+        values = {name: fields[name](item, f"{where}.{name}") for name, item in raw.items()}
+        try:
+            return kind(**values)
+        except ValueError as error:
+            # A record that checks itself: what it says about the values, and where they stood.
+            raise EncodingError(f"{where}: {error}") from error
+
+    return decode
