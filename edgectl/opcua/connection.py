@@ -11,10 +11,11 @@ import asyncio
 import logging
 import socket
 import struct
-from collections.abc import Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from enum import StrEnum
-from typing import Final
+from typing import Any, Final
+from uuid import UUID
 
 from asyncua.client.client import Client
 from asyncua.ua.attribute_ids import AttributeIds
@@ -29,12 +30,13 @@ from asyncua.ua.uaprotocol_auto import (
     TimestampsToReturn,
     UserTokenType,
 )
-from asyncua.ua.uatypes import DataValue, ExpandedNodeId, Int16, Int32, NodeId
+from asyncua.ua.uatypes import DataValue, Int16, Int32, NodeId, String
 
 from edgectl.opcua.address import ServerAddress
 from edgectl.opcua.quality import status_name
 from edgectl.opcua.values import number_of, plain_of
 from edgectl.ports import PlantMismatchError, PlantUnreachableError
+from edgectl.settings.nodes import NodeTextError, same_node
 
 # Everything the library would log arrives here as an error with our own words.
 logging.getLogger("asyncua").setLevel(logging.CRITICAL)
@@ -48,6 +50,14 @@ _CLOSE_TIMEOUT_S: Final = 1.0
 _SESSION_TIMEOUT_MS: Final = 60_000
 _WATCHDOG_INTERVAL_S: Final = 5.0
 _NO_LIMIT: Final = 1_000_000
+
+_IDENTIFIERS: Final[Mapping[str, Callable[[str], Any]]] = {
+    "i": lambda text: Int32(int(text)),
+    "s": String,
+    "g": UUID,
+    "b": bytes.fromhex,
+}
+"""How each kind of identifier in a `SameNode` becomes the library's."""
 
 _IDENTITY_REFUSED: Final = frozenset(
     {
@@ -177,16 +187,12 @@ class Connection:
         Raises PlantMismatchError when the text is no node id at all.
         """
         try:
-            parsed = NodeId.from_string(node)
-        except UaError as error:
-            raise PlantMismatchError(
-                f"{node!r} is not a node id; write nsu=<namespace URI>;s=<name>"
-            ) from error
-        if not isinstance(parsed, ExpandedNodeId):
-            return parsed
-        if parsed.NamespaceUri not in self.namespaces:
+            uri, kind, identifier = same_node(node)
+        except NodeTextError as error:
+            raise PlantMismatchError(f"{node!r} is not a node id: it is {error}") from error
+        if uri not in self.namespaces:
             return None
-        return NodeId(parsed.Identifier, Int16(self.namespaces.index(parsed.NamespaceUri)))
+        return NodeId(_IDENTIFIERS[kind](identifier), Int16(self.namespaces.index(uri)))
 
     async def close(self) -> None:
         """Close the session, or at least the socket. An abandoned client leaks two tasks."""
@@ -198,6 +204,12 @@ async def open_connection(address: ServerAddress) -> Connection:
     if not address.endpoint.startswith("opc.tcp://"):
         raise ConnectRefusedError(
             Refusal.HOST_UNKNOWN, f"{address.endpoint!r} is no endpoint: it begins with opc.tcp://"
+        )
+    if address.security.casefold() == "none" and not address.allow_insecure:
+        raise ConnectRefusedError(
+            Refusal.SECURITY,
+            "security 'none' sends everything in clear text and is for testing only: "
+            "set server.allow_insecure = true to say that you mean it",
         )
     await _check_endpoints(address)
     client = _new_client(address)
@@ -271,12 +283,6 @@ def choose_endpoint(
     names = sorted({_policy_name(endpoint) for endpoint in offered})
     where = f"server {address.endpoint} offers {', '.join(names) or 'no endpoint'}"
     wanted = address.security
-    if wanted.casefold() == "none" and not address.allow_insecure:
-        raise ConnectRefusedError(
-            Refusal.SECURITY,
-            "security 'none' sends everything in clear text and is for testing only: "
-            "set server.allow_insecure = true to say that you mean it",
-        )
     fitting = [
         endpoint
         for endpoint in offered

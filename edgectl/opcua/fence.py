@@ -44,6 +44,10 @@ class WriteFence:
                     f"advisory node {name} is the same node ({node.to_string()}) as tag "
                     f"{owners[node]}: what is read is never written; name another node"
                 )
+            if node.NamespaceIndex == 0:
+                raise PlantMismatchError(
+                    f"advisory node {name} ({node.to_string()}) belongs to OPC UA itself"
+                )
             if node in types:
                 raise PlantMismatchError(
                     f"advisory node {name} ({node.to_string()}) is named twice in the site file"

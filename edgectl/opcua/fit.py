@@ -85,7 +85,7 @@ SUBSTITUTE_STATUS: Final = {
 
 def judge_tag(tag: TagNode, facts: NodeFacts) -> list[Finding]:
     """Existence, type, unit and range of a tag's node."""
-    missing = _judge_existence(tag.tag, facts)
+    missing = _judge_existence(f"tag {tag.tag}", facts)
     if missing is not None:
         return [missing]
     findings = []
@@ -105,7 +105,7 @@ def judge_tag(tag: TagNode, facts: NodeFacts) -> list[Finding]:
 
 def judge_advisory(facts: NodeFacts, kind: FieldKind) -> list[Finding]:
     """Existence and type of an advisory node."""
-    missing = _judge_existence(facts.name, facts)
+    missing = _judge_existence(f"advisory node {facts.name}", facts)
     if missing is not None:
         return [missing]
     allowed = WRITABLE_TYPES[kind]
@@ -161,7 +161,7 @@ def judge_access(facts: NodeFacts, may_be_written: bool) -> list[Finding]:
     return findings
 
 
-def _judge_existence(name: str, facts: NodeFacts) -> Finding | None:
+def _judge_existence(what: str, facts: NodeFacts) -> Finding | None:
     if facts.node_id is None:
         why = "the server does not know its namespace"
     elif not facts.found:
@@ -170,9 +170,9 @@ def _judge_existence(name: str, facts: NodeFacts) -> Finding | None:
         return None
     return Finding(
         Severity.ERROR,
-        name,
+        facts.name,
         "node_missing",
-        f"{name}: node {facts.node} not found ({why})",
+        f"{what}: node {facts.node} not found ({why})",
         "check the node id in the site file against the server",
     )
 

@@ -4,10 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from typing import Final
 
 from asyncua.ua.attribute_ids import AttributeIds
-from asyncua.ua.object_ids import ObjectIds
 from asyncua.ua.uaprotocol_auto import ReadParameters
 from asyncua.ua.uatypes import DataValue, NodeId
 
@@ -15,14 +13,8 @@ from edgectl.opcua.address import AdviceNodes, TagNode
 from edgectl.opcua.connection import Connection, standard_node
 from edgectl.opcua.fence import WriteFence
 from edgectl.opcua.fit import Finding, NodeFacts, Severity, judge_advisory, judge_tag
+from edgectl.opcua.server_view import SERVER_NODES
 from edgectl.opcua.survey import survey_nodes
-
-SERVER_NODES: Final = (
-    ObjectIds.Server_ServerStatus_State,
-    ObjectIds.Server_ServerStatus_CurrentTime,
-    ObjectIds.Server_ServiceLevel,
-)
-"""Read in the same call as the tags, before them."""
 
 Seen = dict[str, NodeFacts]
 """Facts of the tags as first seen in this run, to notice a unit or range that changes later."""
@@ -36,6 +28,10 @@ class Link:
     requests: tuple[ReadParameters, ...]
     asked: tuple[str, ...]
     """Tags in the order of the results, after the server's own nodes."""
+    facts: Mapping[str, NodeFacts]
+    """What the server says about each tag's node."""
+    advisory_facts: Mapping[str, NodeFacts]
+    """The same about the advisory nodes."""
     unusable: Mapping[str, Finding]
     """Tags that are not asked for, and why."""
     mismatch: str | None
@@ -64,63 +60,60 @@ async def make_link(
     """
     await connection.learn_namespaces()
     facts = await survey_nodes(connection, {tag.tag: tag.node for tag in tags}, with_units=True)
-    unusable: dict[str, Finding] = {}
-    for tag in tags:
-        seen = first_seen.setdefault(tag.tag, facts[tag.tag]) if facts[tag.tag].found else None
-        errors = [f for f in judge_tag(tag, facts[tag.tag]) if f.severity is Severity.ERROR]
-        errors += _changes(tag, seen, facts[tag.tag])
-        if errors:
-            unusable[tag.tag] = errors[0]
+    unusable = {tag.tag: errors[0] for tag in tags
+                if (errors := _errors(tag, facts[tag.tag], first_seen))}  # fmt: skip
     used = [tag for tag in tags if tag.tag not in unusable]
     ids = {name: item.node_id for name, item in facts.items() if item.node_id is not None}
     nodes = [standard_node(number) for number in SERVER_NODES] + [ids[tag.tag] for tag in used]
-    advisory, problems, fence = await _raise_fence(connection, advice, ids)
+    fields = {name: (node, kind) for name, node, kind in advice.fields()} if advice else {}
+    advisory_facts = await survey_nodes(
+        connection, {name: node for name, (node, _) in fields.items()}, with_units=False
+    )
+    problems = {name: judge_advisory(advisory_facts[name], kind)
+                for name, (_, kind) in fields.items()}  # fmt: skip
+    usable = {
+        name: (item.node_id, item.data_type)
+        for name, item in advisory_facts.items()
+        if not problems[name] and item.node_id is not None and item.data_type is not None
+    }
     link = Link(
         connection=connection,
         requests=connection.requests([(node, AttributeIds.Value) for node in nodes], True),
         asked=tuple(tag.tag for tag in used),
         unusable=unusable,
         mismatch=_sentence([unusable[t.tag] for t in tags if t.required and t.tag in unusable]),
-        advisory=advisory,
-        advisory_problem=_sentence(problems),
-        fence=fence,
+        facts=facts,
+        advisory_facts=advisory_facts,
+        advisory={name: node for name, (node, _) in usable.items()},
+        advisory_problem=_sentence([one for found in problems.values() for one in found]),
+        fence=WriteFence(connection.client.uaclient, usable, ids, connection.limits.write),
     )
     await link.read()
     return link
 
 
-async def _raise_fence(
-    connection: Connection, advice: AdviceNodes | None, tag_ids: Mapping[str, NodeId]
-) -> tuple[dict[str, NodeId], list[Finding], WriteFence]:
-    fields = {name: (node, kind) for name, node, kind in advice.fields()} if advice else {}
-    facts = await survey_nodes(
-        connection, {name: node for name, (node, _) in fields.items()}, with_units=False
-    )
-    problems = {name: judge_advisory(facts[name], kind) for name, (_, kind) in fields.items()}
-    usable = {
-        name: (item.node_id, item.data_type)
-        for name, item in facts.items()
-        if not problems[name] and item.node_id is not None and item.data_type is not None
-    }
-    fence = WriteFence(connection.client.uaclient, usable, tag_ids, connection.limits.write)
-    nodes = {name: node for name, (node, _) in usable.items()}
-    return nodes, [finding for found in problems.values() for finding in found], fence
-
-
-def _changes(tag: TagNode, before: NodeFacts | None, now: NodeFacts) -> list[Finding]:
-    """Unit or range that changed since this run first saw the node: somebody re-scaled it."""
-    if before is None or (before.unit, before.span) == (now.unit, now.span):
-        return []
-    return [
-        Finding(
-            Severity.ERROR,
-            tag.tag,
-            "unit_differs",
-            f"tag {tag.tag}: unit or range of node {tag.node} changed from "
-            f"{_scale(before)} to {_scale(now)} while running",
-            "compare with the site file, then restart",
+def _errors(tag: TagNode, facts: NodeFacts, first_seen: Seen) -> list[Finding]:
+    """Why a tag cannot be used; remembers what its node looked like at first."""
+    errors = [found for found in judge_tag(tag, facts) if found.severity is Severity.ERROR]
+    if facts.found and _rescaled(first_seen.setdefault(tag.tag, facts), facts):
+        change = f"changed from {_scale(first_seen[tag.tag])} to {_scale(facts)} while running"
+        errors.append(
+            Finding(
+                Severity.ERROR,
+                tag.tag,
+                "unit_differs",
+                f"tag {tag.tag}: unit or range of node {tag.node} {change}",
+                "compare with the site file, then restart",
+            )
         )
-    ]
+    return errors
+
+
+def _rescaled(before: NodeFacts, now: NodeFacts) -> bool:
+    """A unit or range that was given and is now another; one that is missing proves nothing."""
+    return (None not in (before.unit, now.unit) and before.unit != now.unit) or (
+        None not in (before.span, now.span) and before.span != now.span
+    )
 
 
 def _scale(facts: NodeFacts) -> str:

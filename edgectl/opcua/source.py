@@ -3,23 +3,19 @@
 from __future__ import annotations
 
 import asyncio
-from datetime import datetime
 
-from asyncua.ua.uaprotocol_auto import ServerState
 from asyncua.ua.uatypes import DataValue
 
 from edgectl.opcua.address import TagNode
 from edgectl.opcua.connection import LINK_ERRORS
 from edgectl.opcua.fit import SUBSTITUTE_STATUS
-from edgectl.opcua.link import SERVER_NODES, Link
-from edgectl.opcua.quality import BAD_NODE_ID_UNKNOWN, describe_status
+from edgectl.opcua.link import Link
+from edgectl.opcua.quality import BAD_NODE_ID_UNKNOWN
+from edgectl.opcua.server_view import SERVER_NODES, view_server
 from edgectl.opcua.session import PlantSession
-from edgectl.opcua.values import instant_of, number_of, plain_of, reading_of, status_of
+from edgectl.opcua.values import reading_of
 from edgectl.ports import Clock, PlantMismatchError, PlantUnreachableError
-from edgectl.records.readings import Quality, Reading, TagSnapshot, quality_of
-
-_NO_DATA_LEVEL = 1
-"""Service levels 0 (maintenance) and 1 (no data) say: do not use (OPC 10000-4, 6.6.2.4.2)."""
+from edgectl.records.readings import Reading, TagSnapshot
 
 
 class OpcUaTagSource:
@@ -48,7 +44,12 @@ class OpcUaTagSource:
         finally:
             self._in_flight = False
         received_at = self._clock.plant_time()
-        self._judge_server(results, 0.5 * (asked_at + received_at))
+        server = view_server(results[: len(SERVER_NODES)])
+        middle = 0.5 * (asked_at + received_at)
+        self.clock_offset_s = None if server.time is None else server.time - middle
+        self.server_running = server.problem is None
+        if server.problem is not None:
+            raise PlantUnreachableError(server.problem)
         values = dict(zip(link.asked, results[len(SERVER_NODES) :], strict=True))
         readings = tuple(_reading(tag, values, link) for tag in self._session.tags)
         return TagSnapshot(cycle, received_at, readings)
@@ -66,31 +67,6 @@ class OpcUaTagSource:
             why = f"read failed ({error or type(error).__name__})"
             link.connection.abandon(why)
             raise PlantUnreachableError(why) from error
-
-    def _judge_server(self, results: list[DataValue], plant_time: float) -> None:
-        """Clock offset and state. Raises PlantUnreachableError when the server says: do not use."""
-        state, current_time, level = results[: len(SERVER_NODES)]
-        stamp = plain_of(current_time)
-        server_time = instant_of(stamp) if isinstance(stamp, datetime) else None
-        self.clock_offset_s = None if server_time is None else server_time - plant_time
-        self.server_running = False
-        if quality_of(status_of(state)) is Quality.BAD:
-            raise PlantUnreachableError(
-                f"plant server not running (its state is {describe_status(status_of(state))})"
-            )
-        number = int(number_of(state) or 0)
-        if number != ServerState.Running:
-            raise PlantUnreachableError(f"plant server not running (state {_state_name(number)})")
-        service_level = number_of(level)
-        if service_level is not None and service_level <= _NO_DATA_LEVEL:
-            raise PlantUnreachableError(
-                f"plant server not running (service level {service_level:.0f}: no data)"
-            )
-        self.server_running = True
-
-
-def _state_name(number: int) -> str:
-    return ServerState(number).name if number in list(ServerState) else str(number)
 
 
 def _reading(tag: TagNode, values: dict[str, DataValue], link: Link) -> Reading:
