@@ -25,8 +25,7 @@ WRONG_USAGE: Final = 2
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run the simulated plant until it is told to stop; the exit code."""
     options = _parser().parse_args(arguments)
-    # asyncua tells every session and every refused login; only its faults are for us.
-    logging.getLogger("asyncua").setLevel(logging.CRITICAL)
+    _quieten("asyncua")
     drill = Drill(
         DrillName(options.drill),
         options.drill_at * 60.0,
@@ -51,6 +50,15 @@ def main(arguments: Sequence[str] | None = None) -> int:
         sys.stderr.write(f"sim_server: {error}\n")
         return WRONG_USAGE
     return 0
+
+
+def _quieten(library: str) -> None:
+    """Let a library report its own faults (tracebacks) and nothing that clients do wrong."""
+    handler = logging.StreamHandler()
+    handler.addFilter(lambda record: record.exc_info is not None)
+    logger = logging.getLogger(library)
+    logger.handlers = [handler]
+    logger.propagate = False
 
 
 def _say(line: str) -> None:

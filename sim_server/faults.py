@@ -37,7 +37,7 @@ LASTS_S: Final[Mapping[DrillName, float]] = {
     DrillName.SERVER_DROP: 3 * 60.0,
     DrillName.FROZEN_ANALYSER: 240 * 60.0,
     DrillName.LOOP_MANUAL: 15 * 60.0,
-    DrillName.VALVE_LIMIT: 20 * 60.0,
+    DrillName.VALVE_LIMIT: 10 * 60.0,
     DrillName.OPERATOR_OFF: 10 * 60.0,
     DrillName.SLOW_SOLVER: 0.0,
 }
@@ -48,7 +48,7 @@ BAD_SIGNAL: Final = "TI-2107.PV"
 FROZEN_SIGNAL: Final = "AI-2116.PV"
 MANUAL_LOOP: Final = "FIC-2103"
 LIMITED_VALVE: Final = "FIC-2104"
-VALVE_MARGIN: Final = 3.0
+VALVE_MARGIN: Final = 2.0
 """A stuck steam valve opens this far less than it stood open when it stuck [%]."""
 
 

@@ -8,9 +8,11 @@ milliseconds, so that the server goes on answering in between.
 from __future__ import annotations
 
 import asyncio
+import gc
 import json
 import os
 import signal
+import socket
 import sys
 import tempfile
 from collections.abc import Callable
@@ -25,7 +27,7 @@ from sim_server.crew import Crew, CrewMode
 from sim_server.faults import Drill
 from sim_server.nodes import NAMESPACE
 from sim_server.scoring import TruthFile
-from sim_server.server import PlantServer, standard_server
+from sim_server.server import HOST, PlantServer, standard_server
 from sim_server.signals import Plant
 from sim_server.simulation import STEP_S, Simulation
 from sim_server.watchdog import AdviceWatchdog
@@ -83,9 +85,15 @@ async def _serve(
     stopped: asyncio.Event,
     files: ExitStack,
 ) -> None:
-    opcua = await standard_server(passwords)
+    # A port that is taken should be said before seconds of start-up are spent.
+    socket.create_server((HOST, settings.port)).close()
     truth_file = _opened(settings.truth, files)
     log_file = _opened(settings.write_log, files)
+    opcua = await standard_server(passwords)
+    # The standard address space never dies: without this, each full collection walks all of it
+    # and the server stands still meanwhile.
+    gc.collect()
+    gc.freeze()
     # Anchored as late as possible: the plant should not start behind its own clock.
     clock = PlantClock(settings.start, PlantClock.real().anchor, settings.speed)
     write_log = WriteLog(log_file, lambda: (clock.plant_time(), clock.wall()))
@@ -96,7 +104,7 @@ async def _serve(
         settings.watchdog,
         clock.plant_time,
         write_log,
-        None if truth_file is None else TruthFile(truth_file, sorted(plant.true_values())),
+        None if truth_file is None else TruthFile(truth_file, plant.true_values()),
     )
     server = PlantServer(
         opcua, simulation, settings.start, clock.plant_time, write_log, settings.port

@@ -6,7 +6,7 @@ True values go to a file and never to OPC UA: no runtime can peek at them.
 from __future__ import annotations
 
 import csv
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Final, TextIO
@@ -68,10 +68,11 @@ class Score:
 class TruthFile:
     """Writes one row of true values every 30 plant seconds."""
 
-    def __init__(self, file: TextIO, names: Sequence[str]) -> None:
+    def __init__(self, file: TextIO, names: Iterable[str]) -> None:
+        """`names` of the true values, in the order of their columns."""
         self._file = file
         self._rows = csv.writer(file)
-        self._names = tuple(names)
+        self._names = tuple(name for name in names if name != "time_s")
         self._rows.writerow(("time_s", *self._names, "advice_usable", "crew_actions"))
 
     def record(

@@ -68,7 +68,10 @@ class Plant(Protocol):
         """Integrate to that instant, in fixed steps of one plant second."""
 
     def write(self, name: str, value: float) -> None:
-        """A board action on a writable signal. Raises ValueError: unknown, not writable, out of range."""
+        """A board action on a writable signal.
+
+        Raises ValueError: unknown, not writable, out of range.
+        """
 
     def true_values(self) -> Mapping[str, float]:
         """What no instrument shows; for scoring only, never published."""
