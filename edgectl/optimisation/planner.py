@@ -1,0 +1,397 @@
+"""The worker's brain: a request in, an estimate and a plan out.
+
+A pure function of its request: what it remembers travels in the request's
+memory, what it caches is built from the site file alone.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import math
+from collections.abc import Callable, Mapping
+from dataclasses import replace
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from edgectl.column.layout import molar_mass
+from edgectl.column.steady import NoSteadyStateError
+from edgectl.estimation.dynamics import StepFailedError
+from edgectl.estimation.estimator import Belief, MissingInputError
+from edgectl.estimation.outputs import KELVIN
+from edgectl.optimisation.collocation import CollocationEngine
+from edgectl.optimisation.from_site import site_model, steady_from_site
+from edgectl.optimisation.problem import NO_LIMIT, Engine, Situation, Solution, plan_cost
+from edgectl.optimisation.rollout import Rollout, roll_out
+from edgectl.records.encoding import dumps
+from edgectl.records.entries import Json
+from edgectl.records.measurements import MovePosition, Service
+from edgectl.records.plan import (
+    CvPrediction,
+    Estimate,
+    NoPlan,
+    Plan,
+    PlannedMove,
+    PlanRequest,
+    SolverStatistics,
+)
+
+Vector = NDArray[np.float64]
+
+ROUNDING_SLACK = 1e-9
+GIVES_WAY = 0.02
+"""Excess over a planned limit, in the planning coordinate, that counts as giving way."""
+SETTLED_MIN = 20.0
+"""Predictions earlier than this show the past, not the plan."""
+
+
+class Planner:
+    """Estimates and plans for one site.
+
+    Parameters
+    ----------
+    site : mapping
+        The validated site file's tables.
+    wall : callable
+        Monotonic seconds, for the statistics and the soft deadline.
+
+    Raises
+    ------
+    NoSteadyStateError
+        The operating point cannot be solved.
+    """
+
+    def __init__(self, site: Mapping[str, Any], wall: Callable[[], float]) -> None:
+        self._wall = wall
+        self._site = site
+        self._increments = [mv["increment"] for mv in site["mv"].values()]
+        begun = wall()
+        self.steady = steady_from_site(site)
+        self._steady_ms = 1e3 * (wall() - begun)
+        self._parts = site_model(site, self.steady)
+        self._engine: Engine = CollocationEngine(
+            self._parts.looped, self._parts.goals, site["planning"]["max_iterations"]
+        )
+        model = {key: site[key] for key in ("column", "operating_point", "estimation", "planning")}
+        self.model_hash = hashlib.sha256(dumps(model)).hexdigest()
+
+    @property
+    def engine(self) -> str:
+        return self._engine.name
+
+    def warm_up(self) -> None:
+        """Solve once at the operating point, so that the first real answer is not the slow one."""
+        goals = self._parts.goals
+        situation = self._nominal_situation()
+        guess = np.tile(situation.positions[:, None], (1, goals.moves))
+        self._engine.solve(situation, guess, math.inf)
+
+    def answer(self, request: PlanRequest) -> Plan | NoPlan:
+        """Estimate, plan, round, and predict with and without the rounded moves."""
+        begun = self._wall()
+        try:
+            belief = self._parts.estimator.estimate(request)
+        except (MissingInputError, StepFailedError, KeyError, ValueError) as error:
+            return NoPlan(request.request_id, "no_estimate", str(error), None, None)
+        estimated = self._wall()
+        try:
+            situation, guess = self._situation(request, belief)
+            left_s = request.soft_deadline_s - (estimated - begun)
+            solution = self._engine.solve(situation, guess, left_s)
+            return self._plan(request, belief, situation, solution, begun, estimated)
+        except StepFailedError as error:
+            return NoPlan(request.request_id, "no_plan", str(error), None, belief.estimate)
+
+    def job(self, name: str, arguments: Mapping[str, Json]) -> Json:
+        """Answer a side question: `operating_point` is the solved steady state."""
+        if name != "operating_point":
+            raise ValueError(f"unknown job {name!r}; known: operating_point")
+        steady, column = self.steady, self.steady.model.column
+        return {
+            "converged": True,
+            "message": f"solved in {steady.iterations} Newton steps",
+            "residual": steady.residual,
+            "solve_ms": round(self._steady_ms, 1),
+            "reflux_kg_h": steady.inputs.reflux_kmol_h * molar_mass(steady.states[0].light, column),
+            "reboiler_duty_kw": steady.inputs.duty_kw,
+            "distillate_kg_h": steady.distillate_kmol_h
+            * molar_mass(steady.states[0].light, column),
+            "bottoms_temperature_degc": steady.states[-1].temp_k - KELVIN,
+            "loop_tray_temperature_degc": steady.states[self._parts.loop.stage].temp_k - KELVIN,
+        }
+
+    # ------------------------------------------------------------ situations
+
+    def _nominal_situation(self) -> Situation:
+        parts, goals = self._parts, self._parts.goals
+        point = parts.looped.steady_point
+        kmol_per_kg = 1.0 / molar_mass(float(point[0]), parts.looped.model.column)
+        positions = np.array(
+            [
+                self.steady.inputs.reflux_kmol_h / kmol_per_kg
+                if mv.kind == "reflux"
+                else float(parts.looped.tray_temp_k(point)) - KELVIN
+                for mv in goals.mvs
+            ]
+        )
+        free = np.tile(positions[:, None], (1, goals.moves))
+        spread = np.array([mv.max_move for mv in goals.mvs])[:, None]
+        cvs = len(goals.cvs)
+        return Situation(
+            start=point,
+            drive=replace(
+                parts.estimator.tracker._steady,
+                gain_kw_k=parts.loop.gain_kw_k,
+                reset_h=parts.loop.reset_h,
+            ),
+            positions=positions,
+            low=free - 4.0 * spread,
+            high=free + 4.0 * spread,
+            feed_ratio=np.ones(goals.intervals),
+            kmol_per_kg=kmol_per_kg,
+            bias=np.zeros(cvs),
+            cv_low=np.full(cvs, -NO_LIMIT),
+            cv_high=np.full(cvs, NO_LIMIT),
+            cv_setpoint=np.full(cvs, np.nan),
+            in_service=np.ones(cvs),
+        )
+
+    def _situation(self, request: PlanRequest, belief: Belief) -> tuple[Situation, Vector]:
+        parts, goals, state = self._parts, self._parts.goals, belief.state
+        looped, loop = parts.looped, parts.loop
+        at = {position.mv: position for position in request.positions}
+        positions = np.array([_value(at[mv.name]) for mv in goals.mvs])
+        drive = replace(
+            parts.estimator.tracker.drive(state, belief.inputs),
+            gain_kw_k=loop.gain_kw_k,
+            reset_h=loop.reset_h,
+        )
+        start = state.point.copy()
+        reference = next(
+            (
+                positions[j]
+                for j, mv in enumerate(goals.mvs)
+                if mv.kind == "tray_temperature_setpoint"
+            ),
+            state.tray_temp_degc,
+        )
+        # The plant's integrator: today's duty less what the proportional part asks for.
+        start[looped.integral_at] = state.duty_kw - loop.gain_kw_k * (
+            reference - state.tray_temp_degc
+        )
+        start[looped.duty_at] = state.duty_kw
+        low, high = self._move_limits(at, positions)
+        names = [cv.output.name for cv in goals.cvs]
+        situation = Situation(
+            start=start,
+            drive=drive,
+            positions=positions,
+            low=low,
+            high=high,
+            feed_ratio=self._feed_ratio(belief),
+            kmol_per_kg=1.0 / molar_mass(float(state.point[0]), looped.model.column),
+            bias=np.array([belief.biases[name].value for name in names]),
+            cv_low=self._coordinates(belief, "low", -NO_LIMIT),
+            cv_high=self._coordinates(belief, "high", NO_LIMIT),
+            cv_setpoint=self._coordinates(belief, "setpoint", math.nan),
+            in_service=np.array([float(belief.in_service[name]) for name in names]),
+        )
+        return situation, self._first_guess(request, belief, positions)
+
+    def _coordinates(self, belief: Belief, which: str, absent: float) -> Vector:
+        values = []
+        for cv in self._parts.goals.cvs:
+            value = getattr(belief.limits[cv.output.name], which)
+            values.append(absent if value is None else cv.output.to_coordinate(value))
+        return np.array(values)
+
+    def _feed_ratio(self, belief: Belief) -> Vector:
+        """Filtered feed in each interval over its value now, where reflux follows the feed."""
+        goals, state = self._parts.goals, belief.state
+        filter_h = self._parts.estimator.tracker.settings.ratio_filter_h
+        if filter_h <= 0.0:
+            return np.ones(goals.intervals)
+        middles = np.cumsum(goals.grid_h) - np.array(goals.grid_h) / 2.0
+        coming = state.feed_kg_h + (state.ratio_feed_kg_h - state.feed_kg_h) * np.exp(
+            -middles / filter_h
+        )
+        ratio: Vector = coming / state.ratio_feed_kg_h
+        return ratio
+
+    def _move_limits(
+        self, at: Mapping[str, MovePosition], positions: Vector
+    ) -> tuple[Vector, Vector]:
+        """Bounds of every move; an MV out of service is a fixed input."""
+        goals = self._parts.goals
+        low = np.empty((len(goals.mvs), goals.moves))
+        high = np.empty_like(low)
+        for j, mv in enumerate(goals.mvs):
+            given, here = at[mv.name], positions[j]
+            service = given.service
+            down = here if service in (Service.FIXED, Service.RAISE_ONLY) else given.low
+            up = here if service in (Service.FIXED, Service.LOWER_ONLY) else given.high
+            reach = mv.max_move * np.arange(1, goals.moves + 1)
+            # Outside its limits an MV comes back at the pace of moves, not in one jump.
+            low[j] = np.minimum(down, here + reach) if here < down else np.minimum(down, here)
+            low[j] = np.where(here > given.high, np.minimum(low[j], here), low[j])
+            high[j] = np.maximum(up, here - reach) if here > up else np.maximum(up, here)
+            if here < down:
+                low[j] = np.minimum(down, here)
+            if service is Service.FIXED:
+                low[j] = high[j] = here
+        return low, high
+
+    def _first_guess(self, request: PlanRequest, belief: Belief, positions: Vector) -> Vector:
+        goals = self._parts.goals
+        held = np.tile(positions[:, None], (1, goals.moves))
+        rows = request.memory.get("moves")
+        if belief.restarted or rows is None or len(rows) != held.size:
+            return held
+        return np.array(rows).reshape(held.shape)
+
+    # ------------------------------------------------------------ the plan
+
+    def _plan(
+        self,
+        request: PlanRequest,
+        belief: Belief,
+        situation: Situation,
+        solution: Solution,
+        begun: float,
+        estimated: float,
+    ) -> Plan | NoPlan:
+        goals, looped = self._parts.goals, self._parts.looped
+        if not np.all(np.isfinite(solution.moves)):
+            statistics = self._statistics(solution, begun, estimated)
+            sentence = "the engine returned moves that are not numbers"
+            return NoPlan(request.request_id, "no_plan", sentence, statistics, belief.estimate)
+        rounded = self._rounded(situation, solution.moves)
+        held = np.tile(situation.positions[:, None], (1, goals.moves))
+        with_moves = roll_out(looped, goals, situation, rounded)
+        without = roll_out(looped, goals, situation, held)
+        alone = {}
+        for j, mv in enumerate(goals.mvs):
+            only = held.copy()
+            only[j] = rounded[j]
+            alone[mv.name] = roll_out(looped, goals, situation, only)
+        return Plan(
+            request_id=request.request_id,
+            cycle=request.cycle,
+            estimate=self._with_memory(belief.estimate, rounded),
+            times_min=tuple(float(v) for v in np.cumsum(goals.grid_h) * 60.0),
+            moves=self._planned_moves(situation, rounded),
+            predictions=self._predictions(situation, with_moves, without, alone),
+            cost_with=plan_cost(goals, situation, rounded, with_moves.coordinates),
+            cost_without=plan_cost(goals, situation, held, without.coordinates),
+            gives_way=self._gives_way(situation, with_moves),
+            statistics=self._statistics(solution, begun, estimated),
+        )
+
+    def _rounded(self, situation: Situation, moves: Vector) -> Vector:
+        """The first move rounded to what an operator can enter; the rest as planned."""
+        rounded = moves.copy()
+        for j, (mv, increment) in enumerate(
+            zip(self._parts.goals.mvs, self._increments, strict=True)
+        ):
+            here = situation.positions[j]
+            step = moves[j, 0] - here
+            target = round(moves[j, 0] / increment) * increment
+            low = max(situation.low[j, 0], here - mv.max_move)
+            high = min(situation.high[j, 0], here + mv.max_move)
+            if target > high + ROUNDING_SLACK:
+                target = math.floor(high / increment + ROUNDING_SLACK) * increment
+            if target < low - ROUNDING_SLACK:
+                target = math.ceil(low / increment - ROUNDING_SLACK) * increment
+            # A move smaller than what can be entered is no move.
+            no_move = abs(step) < increment / 2.0 or not low <= target <= high
+            rounded[j, 0] = here if no_move else round(target, 9)
+        return rounded
+
+    def _planned_moves(self, situation: Situation, moves: Vector) -> tuple[PlannedMove, ...]:
+        goals = self._parts.goals
+        planned = []
+        for j, mv in enumerate(goals.mvs):
+            here, row = float(situation.positions[j]), moves[j]
+            farthest = row[int(np.argmax(np.abs(row[:3] - here)))]
+            blocks = [goals.block(k) for k in range(goals.intervals)]
+            planned.append(
+                PlannedMove(
+                    mv=mv.name,
+                    position=here,
+                    first=float(row[0]),
+                    destination=float(farthest),
+                    path=tuple(here if b < 0 else float(row[b]) for b in blocks),
+                )
+            )
+        return tuple(planned)
+
+    def _predictions(
+        self,
+        situation: Situation,
+        with_moves: Rollout,
+        without: Rollout,
+        alone: Mapping[str, Rollout],
+    ) -> tuple[CvPrediction, ...]:
+        predictions = []
+        for i, cv in enumerate(self._parts.goals.cvs):
+
+            def path(rollout: Rollout, i: int = i) -> tuple[float, ...]:
+                output = self._parts.goals.cvs[i].output
+                return tuple(
+                    output.to_unit(float(c + situation.bias[i])) for c in rollout.coordinates[i]
+                )
+
+            predictions.append(
+                CvPrediction(
+                    cv=cv.output.name,
+                    with_moves=path(with_moves),
+                    without_moves=path(without),
+                    taken_alone={name: path(rollout) for name, rollout in alone.items()},
+                )
+            )
+        return tuple(predictions)
+
+    def _gives_way(self, situation: Situation, rollout: Rollout) -> tuple[str, ...]:
+        """CVs whose planned limits the plan still breaks once it has had time to act."""
+        late = np.cumsum(self._parts.goals.grid_h) * 60.0 > SETTLED_MIN
+        names = []
+        for i, cv in enumerate(self._parts.goals.cvs):
+            path = rollout.coordinates[i][late] + situation.bias[i]
+            beyond = np.any(path > situation.cv_high[i] + GIVES_WAY) or np.any(
+                path < situation.cv_low[i] - GIVES_WAY
+            )
+            if beyond and situation.in_service[i]:
+                names.append(cv.output.name)
+        return tuple(names)
+
+    def _with_memory(self, estimate: Estimate, moves: Vector) -> Estimate:
+        memory = dict(estimate.memory)
+        memory["moves"] = tuple(float(v) for v in moves.ravel())
+        return replace(estimate, memory=memory)
+
+    def _statistics(self, solution: Solution, begun: float, estimated: float) -> SolverStatistics:
+        now = self._wall()
+        return SolverStatistics(
+            engine=self._engine.name,
+            status=solution.status,
+            converged=solution.converged,
+            iterations=solution.iterations,
+            estimate_ms=1e3 * (estimated - begun),
+            plan_ms=1e3 * (now - estimated),
+            total_ms=1e3 * (now - begun),
+        )
+
+
+def build_brain(site: Mapping[str, Any], wall: Callable[[], float]) -> Planner:
+    """The planner of a validated site file; the worker's entry point."""
+    return Planner(site, wall)
+
+
+def _value(position: MovePosition) -> float:
+    if position.position is None:
+        raise MissingInputError(f"the position of {position.mv} is not known")
+    return position.position
+
+
+__all__ = ["NoSteadyStateError", "Planner", "build_brain"]
