@@ -31,6 +31,12 @@ STRAY_WORDS = (
     r"\b(DESI" + r"GN|VOCABU" + r"LARY|FAU" + r"LTS|SOL" + r"VER|OPC" + r"UA)\.md",
     r"\bbefore-" + r"stop\b",
 )
+TWO_COMMANDS = (
+    "python3 -m venv .venv && .venv/bin/pip install -c deploy/constraints.txt -e . "
+    "&& .venv/bin/edgectl demo",
+    "python3 -m venv .venv && .venv/bin/pip install -c deploy/constraints.txt -e '.[test]' "
+    "&& .venv/bin/pytest",
+)
 TEXT_SUFFIXES = {
     "",
     ".csv",
@@ -124,6 +130,21 @@ def test_commands_in_the_documents_exist(repo_root: Path, documents: list[Path])
         for problem in command_problems(path.read_text(), group)
     ]
     assert not problems, "\n".join(problems)
+
+
+@pytest.mark.parametrize("command", TWO_COMMANDS)
+def test_the_readme_gives_the_two_commands_in_one_piece(command: str, repo_root: Path) -> None:
+    text = (repo_root / "README.md").read_text()
+    # TODO(second round): drop this tolerance once the README is written.
+    if len(text.splitlines()) < 5:
+        pytest.skip("README.md is not written yet")
+    assert any(command in code for code in code_of(text)), command
+
+
+def test_ci_runs_the_second_command(repo_root: Path) -> None:
+    script = (repo_root / ".ci/run").read_text()
+    assert "-c deploy/constraints.txt -e '.[test]'" in script
+    assert "exec .venv/bin/pytest" in script
 
 
 def test_files_in_the_documents_exist(repo_root: Path, documents: list[Path]) -> None:

@@ -29,7 +29,7 @@ SERVICE_STRUCTURES = re.compile(
 )
 # Names too common to look for alone: only on something that is a connection.
 COMMON_NAMES = {"write", "call"}
-CONNECTION = re.compile(r"client|session|connection|protocol", re.IGNORECASE)
+CONNECTION = re.compile(r"(client|session|connection|protocol)(\(\))?$", re.IGNORECASE)
 
 
 def library_calls() -> set[str]:
@@ -82,6 +82,7 @@ def test_each_way_to_write_is_seen() -> None:
         "await client.uaclient.write_attributes(ids, values)",
         "await node.write_value(1.0)",
         "await self._client.uaclient.write(parameters)",
+        "send = self._session.write",
         "await node.set_value(1.0)",
         "parameters = ua.WriteParameters()",
         "from asyncua.ua import WriteValue",
@@ -100,6 +101,7 @@ def test_reading_and_files_are_left_alone() -> None:
         "client.set_user('advisor')",
         "await client.delete_subscriptions([1])",
         "journal.write_ms",
+        "connection.limits.write",
     ]
     for sample in samples:
         assert not list(write_calls(sample, library_calls())), sample
