@@ -1,0 +1,186 @@
+"""A stretch of the journal in memory: what the report and the figures are made from.
+
+A month has some 86,000 cycles, so of each decision only what is shown later is
+kept; the newest is kept whole, and predictions only of the cycles asked for.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field, replace
+from typing import Any, Protocol
+
+from edgectl.records.cycle_record import (
+    DecisionRecord,
+    DeliveryRecord,
+    EventRecord,
+    OpeningRecord,
+    WithdrawalRecord,
+)
+from edgectl.records.encoding import from_json
+from edgectl.records.entries import EntryKind, Json
+from edgectl.records.plan import EMPTY_MEMORY
+
+PREDICTIONS_KEPT = 400
+"""At most about so many cycles keep their predictions; the newest always does."""
+
+
+class StoredEntry(Protocol):
+    """What the journal's reader gives for one entry."""
+
+    @property
+    def seq(self) -> int: ...
+    @property
+    def kind(self) -> EntryKind: ...
+    @property
+    def at(self) -> float: ...
+    @property
+    def body(self) -> Mapping[str, Json]: ...
+
+
+@dataclass(frozen=True, slots=True)
+class Dated:
+    """An entry that is not a cycle, with its instant."""
+
+    at: float
+    record: EventRecord | WithdrawalRecord | OpeningRecord
+
+
+@dataclass(slots=True)
+class History:
+    """Oldest first. Empty lists are normal: a journal may have been opened a second ago."""
+
+    decisions: list[DecisionRecord] = field(default_factory=list)
+    deliveries: dict[int, DeliveryRecord] = field(default_factory=dict)
+    """By the sequence number of their decision."""
+    decision_seqs: list[int] = field(default_factory=list)
+    events: list[Dated] = field(default_factory=list)
+    withdrawals: list[Dated] = field(default_factory=list)
+    openings: list[Dated] = field(default_factory=list)
+    entries: int = 0
+
+    @property
+    def latest(self) -> DecisionRecord | None:
+        return self.decisions[-1] if self.decisions else None
+
+    @property
+    def opening(self) -> OpeningRecord | None:
+        """The newest start of the runtime."""
+        found = self.openings[-1].record if self.openings else None
+        return found if isinstance(found, OpeningRecord) else None
+
+    @property
+    def site(self) -> SiteWords:
+        opening = self.opening
+        return SiteWords(opening.site_content if opening else {})
+
+
+class SiteWords:
+    """What the journalled site file says about a tag, an MV or a CV; blank when it does not."""
+
+    def __init__(self, content: Mapping[str, Any]) -> None:
+        self._content = content
+
+    @property
+    def title(self) -> str:
+        return str(self._of("site").get("name", "Site not named in this journal"))
+
+    @property
+    def feed_stage(self) -> int | None:
+        stage = self._of("column").get("feed_stage")
+        return stage if isinstance(stage, int) else None
+
+    def unit(self, name: str) -> str:
+        for section in ("cv", "mv", "tags"):
+            found = self._of(section, name).get("unit")
+            if found is not None:
+                return "" if found == "-" else str(found).replace("degC", "°C")
+        return ""
+
+    def description(self, name: str) -> str:
+        for section in ("cv", "mv", "tags"):
+            if "description" in self._of(section, name):
+                return str(self._of(section, name)["description"])
+        return name
+
+    def cv(self, name: str) -> Mapping[str, Any]:
+        return self._of("cv", name)
+
+    def mv(self, name: str) -> Mapping[str, Any]:
+        return self._of("mv", name)
+
+    def tag(self, name: str) -> Mapping[str, Any]:
+        return self._of("tags", name)
+
+    def tray_tags(self) -> dict[str, int]:
+        """Tags that measure a stage's temperature, with their stage."""
+        tags = self._of("tags").items()
+        return {
+            name: tag["stage"] for name, tag in tags if isinstance(tag.get("stage"), int)
+        }
+
+    def _of(self, *path: str) -> Mapping[str, Any]:
+        found: Any = self._content
+        for part in path:
+            found = found.get(part) if isinstance(found, Mapping) else None
+        return found if isinstance(found, Mapping) else {}
+
+
+def history_from(
+    entries: Iterable[StoredEntry],
+    begin: float = -math.inf,
+    end: float = math.inf,
+    every_prediction: int = 1,
+) -> History:
+    """The history between two instants of plant time; starts before `begin` are kept.
+
+    `every_prediction` says how often predictions are kept. Raises EncodingError when a body
+    is not the record that its kind says.
+    """
+    history = History()
+    newest: DecisionRecord | None = None
+    for entry in entries:
+        if entry.at > end:
+            continue
+        if entry.kind is EntryKind.OPENED:
+            # A stretch is read with the site file that was in force, however long ago it started.
+            history.openings.append(Dated(entry.at, from_json(OpeningRecord, entry.body)))
+        if entry.at < begin:
+            continue
+        history.entries += 1
+        if entry.kind is EntryKind.DECISION:
+            if newest is not None:
+                keep = len(history.decisions) % every_prediction == 0
+                history.decisions[-1] = _slim(newest, keep_predictions=keep)
+            newest = from_json(DecisionRecord, entry.body)
+            history.decisions.append(newest)
+            history.decision_seqs.append(entry.seq)
+        elif entry.kind is EntryKind.DELIVERY:
+            delivery: DeliveryRecord = from_json(DeliveryRecord, entry.body)
+            if delivery.decision_seq is not None:
+                history.deliveries[delivery.decision_seq] = delivery
+        elif entry.kind is EntryKind.EVENT:
+            history.events.append(Dated(entry.at, from_json(EventRecord, entry.body)))
+        elif entry.kind is EntryKind.WITHDRAWAL:
+            history.withdrawals.append(Dated(entry.at, from_json(WithdrawalRecord, entry.body)))
+    return history
+
+
+def _slim(record: DecisionRecord, *, keep_predictions: bool) -> DecisionRecord:
+    estimate = record.estimate
+    if estimate is not None:
+        estimate = replace(estimate, memory=EMPTY_MEMORY, profile=())
+    predictions = (
+        tuple(replace(found, taken_alone={}) for found in record.predictions)
+        if keep_predictions
+        else ()
+    )
+    return replace(
+        record,
+        readings=(),
+        memory_in=EMPTY_MEMORY,
+        estimate=estimate,
+        planned=(),
+        predictions=predictions,
+    )
