@@ -52,9 +52,10 @@ def _low_below_high(tree: Any, path: Path) -> Iterator[Complaint]:
 
 
 def _is_number(value: object) -> TypeGuard[int | float]:
+    if isinstance(value, bool) or not isinstance(value, int | float):
+        return False
     # Comparing, because math.isfinite cannot take whole numbers beyond a float's range.
-    is_number = isinstance(value, int | float) and not isinstance(value, bool)
-    return is_number and -math.inf < value < math.inf
+    return -math.inf < value < math.inf
 
 
 RULES: Final[tuple[Rule, ...]] = (

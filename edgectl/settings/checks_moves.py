@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import itertools
 from collections.abc import Callable, Generator, Iterator
 from typing import Final, TypeAlias
 
@@ -24,12 +23,18 @@ _MEASURED_BY: Final = {
     "feed_flow": Role.FEED_FLOW,
     "feed_temperature": Role.FEED_TEMPERATURE,
 }
+_LIMITS: Final = ("hard_low", "low", "setpoint", "high", "hard_high")
+# Inner, outer, and whether the outer one is a lower limit.
+_NESTED: Final = (
+    ("low", "hard_low", True),
+    ("setpoint", "low", True),
+    ("setpoint", "high", False),
+    ("high", "hard_high", False),
+    ("setpoint", "hard_low", True),
+    ("setpoint", "hard_high", False),
+)
 _QUALITY_ONLY: Final = (
-    "hard_low",
-    "hard_high",
-    "low",
-    "high",
-    "setpoint",
+    *_LIMITS,
     "weight",
     "soft_linear",
     "soft_quadratic",
@@ -44,7 +49,8 @@ def mv_tags_fit(parts: Parts) -> Iterator[Complaint]:
     """An MV's tags exist, have fitting roles, and the MV's unit and one basis.
 
     `position` is a loop_setpoint, `output` a loop_output, `mode` a loop_mode,
-    `measured` the reflux_flow or a tray_temperature, `in_ratio_to` the feed_flow.
+    `measured` the reflux_flow or a tray_temperature, `in_ratio_to` the feed_flow;
+    `loop.stage` is the stage of `measured`.
     """
     for name, mv in parts.mv.items():
         path = ("mv", name)
@@ -162,8 +168,7 @@ def limits_fit(parts: Parts) -> Iterator[Complaint]:
     places += [(("cv", name), cv, cv.measured) for name, cv in parts.cv.items()]
     for path, goal, tag_name in places:
         tag = parts.tags.get(tag_name)
-        keys = ("low", "high", "setpoint", "hard_low", "hard_high")
-        for key in keys:
+        for key in _LIMITS:
             limit = getattr(goal, key, None)
             if isinstance(limit, str):
                 held = yield from _named(parts, (*path, key), limit, Role.LIMIT, goal.unit)
@@ -244,25 +249,24 @@ def cv_limits_nest(parts: Parts) -> Iterator[Complaint]:
     """
     for name, cv in parts.cv.items():
         path = ("cv", name)
-        order = ("hard_low", "low", "setpoint", "high", "hard_high")
-        given = [(key, getattr(cv, key)) for key in order]
+        given = [(key, getattr(cv, key)) for key in _LIMITS]
         numbers = [(key, value) for key, value in given if isinstance(value, float)]
         for key, value in numbers:
             if cv.coordinate == "logarithmic" and value <= 0:
                 yield Complaint(
                     (*path, key), value, "above 0 in a logarithmic coordinate", "correct it"
                 )
-        for (lower, low), (upper, high) in itertools.pairwise(numbers):
-            # Equal or swapped pairs of one name are told by `low_below_high`.
-            if low > high and (lower, upper) not in (("low", "high"), ("hard_low", "hard_high")):
-                inner, value = (upper, high) if lower == "hard_low" else (lower, low)
-                other, bound = (lower, low) if inner == upper else (upper, high)
-                side = "at least" if inner == upper else "at most"
+        limits = dict(numbers)
+        for inner, outer, is_low in _NESTED:
+            if inner not in limits or outer not in limits:
+                continue
+            own, bound = limits[inner], limits[outer]
+            if own < bound if is_low else own > bound:
                 yield Complaint(
                     (*path, inner),
-                    value,
-                    f"{side} `{other}`, which is {bound:g}",
-                    "planned limits are backed off from the specification",
+                    own,
+                    f"at {'least' if is_low else 'most'} `{outer}`, which is {bound:g}",
+                    "the setpoint lies inside the planned limits, these inside the specification",
                 )
 
 

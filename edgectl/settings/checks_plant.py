@@ -30,7 +30,7 @@ def login_is_safe(parts: Parts) -> Iterator[Complaint]:
         yield Complaint(
             ("server", "security"),
             server.security,
-            "a secure policy, or `none` with allow_insecure = true",
+            "`none` only together with allow_insecure = true",
             "for testing on loopback write allow_insecure = true; never on a plant network",
         )
     given = [key for key in ("password_env", "password_file") if getattr(server, key) is not None]

@@ -201,23 +201,15 @@ def _belongs(name: str, tag: Tag, key: str, wanted: bool) -> Iterator[Complaint]
 
 
 def stages_exist(parts: Parts) -> Iterator[Complaint]:
-    """Every `stage` is a stage of the column."""
+    """The `stage` of a tag is a stage of the column."""
     column = parts.section(Column)
     if column is None:
         return
-    places: list[tuple[Path, int | None]] = [
-        (("tags", name, "stage"), tag.stage) for name, tag in parts.tags.items()
-    ]
-    places += [
-        (("mv", name, "loop", "stage"), mv.loop.stage)
-        for name, mv in parts.mv.items()
-        if mv.loop is not None
-    ]
-    for path, stage in places:
-        if stage is not None and stage >= column.stages:
+    for name, tag in parts.tags.items():
+        if tag.stage is not None and tag.stage >= column.stages:
             yield Complaint(
-                path,
-                stage,
+                ("tags", name, "stage"),
+                tag.stage,
                 f"0 (drum) to {column.stages - 1} (reboiler)",
                 "stages count from the top; correct it or `column.stages`",
             )

@@ -52,7 +52,7 @@ class SiteFileError(Exception):
 
     def __init__(self, file: str, findings: Iterable[Finding]) -> None:
         self.file = file
-        self.findings = sorted(findings, key=lambda finding: (finding.line or 0, finding.key))
+        self.findings = sorted(findings, key=lambda f: (f.line is None, f.line or 0, f.key))
         super().__init__(file, self.findings)
 
     def __str__(self) -> str:
@@ -127,8 +127,13 @@ def from_validation(
     model: type[BaseModel], error: ValidationError, prefix: Path
 ) -> Iterator[Complaint]:
     """Each of pydantic's errors in our words."""
-    for detail in error.errors(include_url=False):
-        loc = tuple(detail["loc"])
+    details = error.errors(include_url=False)
+    # A list with a wrong item counts as too short as well: only the item is worth a finding.
+    above = {detail["loc"][:size] for detail in details for size in range(len(detail["loc"]))}
+    for detail in details:
+        loc = detail["loc"]
+        if loc in above:
+            continue
         yield _complaint(model, (*prefix, *loc), loc, dict(detail))
 
 
@@ -141,6 +146,8 @@ def _complaint(
         return unknown_key(path, value, owner.model_fields)
     words = "a section" if field is None else allowed_words(field.annotation, field.metadata)
     if kind == "missing":
+        if isinstance(path[-1], int):
+            return Complaint(path, MISSING, words, "the list is too short; add what is missing")
         meaning = (field.description or "").split("\n")[0] if field else ""
         return Complaint(path, MISSING, words, f"add `{path[-1]}`: {meaning}")
     if kind == "finite_number" or (isinstance(value, float) and not math.isfinite(value)):

@@ -16,7 +16,7 @@ from edgectl.settings.parts import take_apart
 from edgectl.settings.site import Site
 
 LARGEST_FILE_BYTES: Final = 1024 * 1024
-LONGEST_LINE: Final = 2000
+LONGEST_LINE: Final = 1000
 DEEPEST: Final = 12
 MOST_VALUES: Final = 20_000
 MOST_FINDINGS: Final = 500

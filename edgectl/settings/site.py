@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from typing import Annotated, Any, Literal
+from typing import Annotated, Any, Final, Literal
 
 from pydantic import Field, PrivateAttr
 
@@ -17,6 +17,11 @@ from edgectl.settings.goals import (
     Planning,
 )
 from edgectl.settings.tags import Tag
+
+# No sign that could set off a user or password from the host.
+_ENDPOINT: Final = (
+    r"^opc\.tcp://([A-Za-z0-9._-]+|\[[0-9A-Fa-f:.]+\])(:[0-9]{1,5})?(/[A-Za-z0-9._~%/-]*)?$"
+)
 
 
 class About(Section):
@@ -33,7 +38,7 @@ class Server(Section):
 
     endpoint: Annotated[
         str,
-        Field(pattern=r"^opc\.tcp://[A-Za-z0-9._\-\[\]:]+(/[!-~]*)?$", max_length=300),
+        Field(pattern=_ENDPOINT, max_length=300),
         Says("opc.tcp://host:port/path, without user or password"),
     ]
     """Where the server listens."""
