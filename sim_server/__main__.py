@@ -17,6 +17,7 @@ from sim_server.crew import CrewMode
 from sim_server.faults import BEGIN_S, Drill, DrillName
 from sim_server.plant import SimulatedPlant
 from sim_server.run import RunSettings, run
+from sim_server.simulation import SetupError
 from sim_server.watchdog import ADVISORY_PERIOD_S, AdviceWatchdog
 
 WRONG_USAGE: Final = 2
@@ -46,7 +47,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     try:
         plant = SimulatedPlant(options.seed, story=options.story)
         asyncio.run(run(settings, plant, _say))
-    except (OSError, ValueError) as error:
+    except (OSError, SetupError) as error:
         sys.stderr.write(f"sim_server: {error}\n")
         return WRONG_USAGE
     return 0
@@ -78,7 +79,7 @@ def _parser() -> argparse.ArgumentParser:
     add("--plant", choices=["methanol_water"], default="methanol_water")
     add("--port", type=_port, default=0, help="0 takes a free one (default)")
     add("--speed", type=_positive, default=1.0, help="plant seconds per wall second")
-    add("--seed", type=int, default=1, help="of noise, disturbances and crew")
+    add("--seed", type=_seed, default=1, help="of noise, disturbances and crew")
     add("--crew", choices=[mode.value for mode in CrewMode], default=CrewMode.IGNORES.value)
     add("--story", choices=["default", "calm"], default="default", help="disturbances")
     add("--drill", choices=[name.value for name in DrillName], default=DrillName.NONE.value)
@@ -103,6 +104,13 @@ def _port(text: str) -> int:
     if not 0 <= port <= 65535:
         raise argparse.ArgumentTypeError(f"{port} is not a port: 0 to 65535")
     return port
+
+
+def _seed(text: str) -> int:
+    seed = int(text)
+    if seed < 0:
+        raise argparse.ArgumentTypeError(f"{seed} is below zero")
+    return seed
 
 
 def _positive(text: str) -> float:

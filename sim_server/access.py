@@ -33,6 +33,7 @@ from asyncua.ua.attribute_ids import AttributeIds
 from asyncua.ua.status_codes import StatusCodes
 
 from sim_server.nodes import standard_id
+from sim_server.simulation import SetupError
 from sim_server.writelog import WriteLog
 
 if TYPE_CHECKING:
@@ -204,7 +205,7 @@ def passwords_from(environment: Mapping[str, str]) -> tuple[dict[str, str], bool
 
     Raises
     ------
-    ValueError
+    SetupError
         A password variable is there but empty.
     """
     passwords = {}
@@ -215,7 +216,7 @@ def passwords_from(environment: Mapping[str, str]) -> tuple[dict[str, str], bool
             password = secrets.token_urlsafe(18)
             invented = True
         if not password:
-            raise ValueError(f"{variable} is empty: set a password or unset the variable")
+            raise SetupError(f"{variable} is empty: set a password or unset the variable")
         passwords[user] = password
     return passwords, invented
 

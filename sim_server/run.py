@@ -13,6 +13,7 @@ import json
 import os
 import signal
 import socket
+import stat
 import sys
 import tempfile
 from collections.abc import Callable
@@ -29,7 +30,7 @@ from sim_server.nodes import NAMESPACE
 from sim_server.scoring import TruthFile
 from sim_server.server import HOST, PlantServer, standard_server
 from sim_server.signals import Plant
-from sim_server.simulation import STEP_S, Simulation
+from sim_server.simulation import STEP_S, SetupError, Simulation
 from sim_server.watchdog import AdviceWatchdog
 from sim_server.writelog import WriteLog
 
@@ -203,6 +204,9 @@ def _keep(passwords: dict[str, str], files: ExitStack) -> Path:
 
 async def _stop_when_closed(stdin: TextIO, stopped: asyncio.Event) -> asyncio.BaseTransport:
     """End with the parent: its death closes our standard input, however it died."""
+    mode = os.fstat(stdin.fileno()).st_mode
+    if not (stat.S_ISFIFO(mode) or stat.S_ISSOCK(mode) or stdin.isatty()):
+        raise SetupError("--until-stdin-closes: standard input is not a pipe, so it never closes")
 
     class Watch(asyncio.Protocol):
         def connection_lost(self, exc: Exception | None) -> None:

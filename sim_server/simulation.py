@@ -24,6 +24,10 @@ CREW: Final = "board (crew)"
 DRILL: Final = "board (drill)"
 
 
+class SetupError(Exception):
+    """The rehearsal cannot start as asked; the message says why."""
+
+
 class Simulation:
     """One rehearsal of the plant.
 
@@ -38,6 +42,11 @@ class Simulation:
     write_log : WriteLog
     truth : TruthFile, optional
         Receives the true values.
+
+    Raises
+    ------
+    SetupError
+        The drill needs something that this plant cannot do.
     """
 
     def __init__(
@@ -51,7 +60,7 @@ class Simulation:
         truth: TruthFile | None = None,
     ) -> None:
         if drill.needs_valve_limit and not isinstance(plant, LimitsValves):
-            raise ValueError(f"drill {drill.name}: this plant cannot limit its valves")
+            raise SetupError(f"drill {drill.name}: this plant cannot limit its valves")
         self.plant = plant
         self.board = AdvisoryBoard()
         self.usable = False

@@ -206,6 +206,7 @@ def test_a_plant_too_fast_for_its_machine_says_so_once_and_still_ends_with_its_p
         (("--speed", "0"), "not a number above zero"),
         (("--speed", "nan"), "not a number above zero"),
         (("--port", "70000"), "not a port"),
+        (("--seed", "-1"), "below zero"),
         (("--crew", "sleeps"), "invalid choice"),
         (("--drill", "earthquake"), "invalid choice"),
         (("--start", "yesterday"), "--start"),
@@ -233,3 +234,11 @@ def test_a_port_in_use_and_a_file_that_cannot_be_written_are_said(
     said = capsys.readouterr()
     assert "/no/such/folder/log" in said.err
     assert said.out == ""
+
+
+def test_an_empty_password_is_refused(
+    capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setenv("EDGECTL_SIM_BOARD_PASSWORD", "")
+    assert main([]) == 2
+    assert "EDGECTL_SIM_BOARD_PASSWORD is empty" in capsys.readouterr().err

@@ -15,7 +15,7 @@ from sim_server.faults import Drill, DrillName
 from sim_server.plant import SimulatedPlant
 from sim_server.scoring import TruthFile
 from sim_server.signals import Plant, Signal, SignalSpec
-from sim_server.simulation import BAD_OUT_OF_RANGE, CREW, DRILL, Simulation
+from sim_server.simulation import BAD_OUT_OF_RANGE, CREW, DRILL, SetupError, Simulation
 from sim_server.watchdog import AdviceWatchdog
 from sim_server.writelog import WriteLog
 
@@ -169,7 +169,7 @@ class WithoutValves:
 
 def test_a_drill_that_the_plant_cannot_do_is_refused_at_once() -> None:
     plant: Plant = WithoutValves()
-    with pytest.raises(ValueError, match="cannot limit its valves"):
+    with pytest.raises(SetupError, match="cannot limit its valves"):
         Simulation(
             plant,
             Crew(CrewMode.IGNORES, 1),
