@@ -120,12 +120,13 @@ def solve_tail(times_ms: Sequence[float], budget_ms: float) -> str:
         before, after = 1.0 - index / count, max(1.0 - (index + 1) / count, lowest)
         steps += [(across(value), up(before)), (across(value), up(after))]
     drawing.path(steps, "curve")
-    for share, class_ in ((0.5, "small"), (0.99, "small")):
-        value = percentile(ranked, share)
-        if value is not None:
-            drawing.dot(across(value), up(max(1.0 - share, lowest)), 3.5, "reading")
-            words = f"{100 * share:g} % took at most {number_words(value)} ms"
-            drawing.text(across(value) + 8, up(max(1.0 - share, lowest)) - 5, words, class_)
+    for share in (0.5, 0.99):
+        slow = percentile(ranked, share)
+        if slow is not None:
+            x, y = across(slow), up(max(1.0 - share, lowest))
+            drawing.dot(x, y, 3.5, "reading")
+            words = f"{100 * share:g} % took at most {number_words(slow)} ms"
+            drawing.text(x + 8, y - 5, words, "small")
     _budget_mark(drawing, across(budget_ms), top, bottom)
     _wall_axis(drawing, across, bottom, left, right)
     return str(drawing)

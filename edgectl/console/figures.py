@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections import Counter
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from edgectl.console.history import History
 from edgectl.records.advice import Standing
@@ -100,12 +100,10 @@ def spells(decisions: Sequence[DecisionRecord]) -> list[Spell]:
         advice, at = decision.advice, decision.made_at
         last = found[-1] if found else None
         if last and (last.standing, last.reason) == (advice.standing, advice.reason):
-            found[-1] = Spell(
-                last.standing, last.reason, last.sentence, last.begin, at, last.cycles + 1
-            )
+            found[-1] = replace(last, end=at, cycles=last.cycles + 1)
             continue
         if last:
-            found[-1] = Spell(last.standing, last.reason, last.sentence, last.begin, at, last.cycles)
+            found[-1] = replace(last, end=at)
         found.append(Spell(advice.standing, advice.reason, advice.sentence, at, at, 1))
     return found
 

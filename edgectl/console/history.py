@@ -1,16 +1,18 @@
 """A stretch of the journal in memory: what the report and the figures are made from.
 
 A month has some 86,000 cycles, so of each decision only what is shown later is
-kept; the newest is kept whole, and predictions only of the cycles asked for.
+kept; the newest is kept whole, and predictions only now and then.
 """
 
 from __future__ import annotations
 
-import math
+import itertools
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
-from typing import Any, Protocol
+from pathlib import Path
+from typing import Any, Final
 
+from edgectl.journal.reader import JournalReader, StoredEntry
 from edgectl.records.cycle_record import (
     DecisionRecord,
     DeliveryRecord,
@@ -19,24 +21,11 @@ from edgectl.records.cycle_record import (
     WithdrawalRecord,
 )
 from edgectl.records.encoding import from_json
-from edgectl.records.entries import EntryKind, Json
+from edgectl.records.entries import EntryKind
 from edgectl.records.plan import EMPTY_MEMORY
 
-PREDICTIONS_KEPT = 400
-"""At most about so many cycles keep their predictions; the newest always does."""
-
-
-class StoredEntry(Protocol):
-    """What the journal's reader gives for one entry."""
-
-    @property
-    def seq(self) -> int: ...
-    @property
-    def kind(self) -> EntryKind: ...
-    @property
-    def at(self) -> float: ...
-    @property
-    def body(self) -> Mapping[str, Json]: ...
+PREDICTIONS_EVERY: Final = 5
+"""Every so many cycles keep their predictions; the newest always does."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -58,7 +47,6 @@ class History:
     events: list[Dated] = field(default_factory=list)
     withdrawals: list[Dated] = field(default_factory=list)
     openings: list[Dated] = field(default_factory=list)
-    entries: int = 0
 
     @property
     def latest(self) -> DecisionRecord | None:
@@ -127,31 +115,31 @@ class SiteWords:
         return found if isinstance(found, Mapping) else {}
 
 
-def history_from(
-    entries: Iterable[StoredEntry],
-    begin: float = -math.inf,
-    end: float = math.inf,
-    every_prediction: int = 1,
+def read_history(
+    path: Path, begin: float | None = None, end: float | None = None
 ) -> History:
-    """The history between two instants of plant time; starts before `begin` are kept.
+    """The history with begin <= time < end of plant time [s].
 
-    `every_prediction` says how often predictions are kept. Raises EncodingError when a body
-    is not the record that its kind says.
+    Starts of the runtime before `begin` are in it too: a stretch is read with the site file
+    that was in force. Raises JournalUnreadableError and EncodingError.
     """
+    others = [kind for kind in EntryKind if kind is not EntryKind.OPENED]
+    with JournalReader(path) as reader:
+        openings = reader.entries(EntryKind.OPENED, to_time=end)
+        rest = reader.entries(*others, from_time=begin, to_time=end)
+        return history_from(itertools.chain(openings, rest))
+
+
+def history_from(entries: Iterable[StoredEntry]) -> History:
+    """The history in these entries. Raises EncodingError when a body is not what its kind says."""
     history = History()
     newest: DecisionRecord | None = None
     for entry in entries:
-        if entry.at > end:
-            continue
         if entry.kind is EntryKind.OPENED:
-            # A stretch is read with the site file that was in force, however long ago it started.
             history.openings.append(Dated(entry.at, from_json(OpeningRecord, entry.body)))
-        if entry.at < begin:
-            continue
-        history.entries += 1
-        if entry.kind is EntryKind.DECISION:
+        elif entry.kind is EntryKind.DECISION:
             if newest is not None:
-                keep = len(history.decisions) % every_prediction == 0
+                keep = len(history.decisions) % PREDICTIONS_EVERY == 0
                 history.decisions[-1] = _slim(newest, keep_predictions=keep)
             newest = from_json(DecisionRecord, entry.body)
             history.decisions.append(newest)

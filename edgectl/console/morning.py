@@ -10,8 +10,8 @@ from edgectl.console.figures import (
     overruns,
     refused_plans,
     spells,
-    uptake,
     unused_tags,
+    uptake,
 )
 from edgectl.console.history import History, SiteWords
 from edgectl.console.svg import clock_words, number_words
@@ -30,6 +30,11 @@ def duration_words(seconds: float) -> str:
         return f"{minutes} min {rest:02d} s" if rest else f"{minutes} min"
     hours, minutes = divmod(round(total / 60), 60)
     return f"{hours} h {minutes:02d} min" if minutes else f"{hours} h"
+
+
+def repeated(count: int) -> str:
+    """`once`, `twice`, `3 times`."""
+    return {1: "once", 2: "twice"}.get(count, f"{count} times")
 
 
 def counted(count: int, noun: str) -> str:
@@ -61,7 +66,7 @@ def holds_answer(history: History) -> str:
         if kind:
             longest = max(kind, key=_length)
             said.append(
-                f"It {word} {counted(len(kind), 'time')}, at the longest for"
+                f"It {word} {repeated(len(kind))}, at the longest for"
                 f" {duration_words(_length(longest))} from {clock_words(longest.begin)}"
                 f" ({longest.reason})."
             )
@@ -117,8 +122,8 @@ def _uptake_words(moves: list[MadeMove]) -> str:
     counts = {word: sum(m.outcome == word for m in moves) for word in OUTCOME_WORDS}
     named = ", ".join(f"{count} {OUTCOME_WORDS[word]}" for word, count in counts.items() if count)
     shares = uptake(moves)
-    share = f" Of those settled, {100 * shares['taken']:.0f} % were taken in full." if shares else ""
-    return f"{counted(len(moves), 'move')} suggested: {named}.{share}"
+    taken = f" Of those settled, {shares['taken']:.0%} were taken in full." if shares else ""
+    return f"{counted(len(moves), 'move')} suggested: {named}.{taken.replace('%', ' %')}"
 
 
 def events_answer(history: History) -> list[str]:

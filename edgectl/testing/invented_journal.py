@@ -9,7 +9,6 @@ from __future__ import annotations
 import math
 import random
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
 from typing import Any, Final
 
 from edgectl.records.advice import Advice, Delivery, Standing, SuggestedMove
@@ -24,7 +23,7 @@ from edgectl.records.cycle_record import (
     Provenance,
 )
 from edgectl.records.encoding import to_json
-from edgectl.records.entries import EntryKind, Json
+from edgectl.records.entries import Entry, EntryKind
 from edgectl.records.measurements import Measurement, MovePosition, Service, Verdict
 from edgectl.records.plan import (
     CvEstimate,
@@ -81,15 +80,6 @@ SITE: Final[Mapping[str, Any]] = {
         },
     },
 }
-
-
-@dataclass(frozen=True, slots=True)
-class InventedEntry:
-    seq: int
-    kind: EntryKind
-    cycle: int | None
-    at: float
-    body: Mapping[str, Json]
 
 
 class InventedShift:
@@ -281,7 +271,7 @@ class InventedShift:
         return ()
 
 
-def invented_entries(cycles: int = 480, seed: int = 1) -> Iterator[InventedEntry]:
+def invented_entries(cycles: int = 480, seed: int = 1) -> Iterator[Entry]:
     """The shift as entries: one opening, then a decision and a delivery for each cycle."""
     opening = OpeningRecord(
         provenance=WHO,
@@ -295,22 +285,22 @@ def invented_entries(cycles: int = 480, seed: int = 1) -> Iterator[InventedEntry
         site_content=SITE,
     )
     shift = InventedShift(seed)
+    yield _entry(EntryKind.OPENED, None, BEGIN, opening)
     seq = 1
-    yield _entry(seq, EntryKind.OPENED, None, BEGIN, opening)
     for cycle in range(cycles):
         decision = shift.decision(cycle)
-        yield _entry(seq + 1, EntryKind.DECISION, cycle, decision.made_at, decision)
+        seq += 1
+        yield _entry(EntryKind.DECISION, cycle, decision.made_at, decision)
         delivery = DeliveryRecord(
             delivery=Delivery(cycle, decision.advice.valid, True, (), None),
-            decision_seq=seq + 1,
+            decision_seq=seq,
             journal_ms=3.0,
             publish_ms=14.0,
             previous_record_bytes=21_000,
         )
-        yield _entry(seq + 2, EntryKind.DELIVERY, cycle, decision.made_at + 1.0, delivery)
-        seq += 2
+        seq += 1
+        yield _entry(EntryKind.DELIVERY, cycle, decision.made_at + 1.0, delivery)
         if cycle in (240, 256):
-            seq += 1
             raised = cycle == 240
             event = EventRecord(
                 "tag_not_used",
@@ -320,19 +310,19 @@ def invented_entries(cycles: int = 480, seed: int = 1) -> Iterator[InventedEntry
                 0 if raised else 16,
                 "TI-2107 is bad." if raised else "TI-2107 is good again.",
             )
-            yield _entry(seq, EntryKind.EVENT, cycle, decision.made_at, event)
+            seq += 1
+            yield _entry(EntryKind.EVENT, cycle, decision.made_at, event)
 
 
 def _entry(
-    seq: int,
     kind: EntryKind,
     cycle: int | None,
     at: float,
     record: DecisionRecord | DeliveryRecord | EventRecord | OpeningRecord,
-) -> InventedEntry:
+) -> Entry:
     body = to_json(record)
     assert isinstance(body, dict)
-    return InventedEntry(seq, kind, cycle, at, body)
+    return Entry(kind, cycle, at, body)
 
 
 def _stage(stage: int) -> ProfileStage:
