@@ -127,6 +127,22 @@ def mv_details_fit(parts: Parts) -> Iterator[Complaint]:
             )
 
 
+def loops_are_apart(parts: Parts) -> Iterator[Complaint]:
+    """No two MVs share a `position`, `measured`, `output` or `mode` tag."""
+    seen: dict[str, str] = {}
+    for name, mv in parts.mv.items():
+        for key in ("position", "measured", "output", "mode"):
+            tag = getattr(mv, key)
+            first = seen.setdefault(tag, name)
+            if first != name:
+                yield Complaint(
+                    ("mv", name, key),
+                    tag,
+                    "a tag of this MV's own loop",
+                    f"MV {first} has it already; was it copied?",
+                )
+
+
 def move_sizes_fit(parts: Parts) -> Iterator[Complaint]:
     """`increment` <= `worthwhile_move` <= `max_move` <= `high` - `low`."""
     for name, mv in parts.mv.items():
@@ -324,6 +340,7 @@ def _named(
 RULES: Final[tuple[Callable[[Parts], Iterator[Complaint]], ...]] = (
     mv_tags_fit,
     mv_details_fit,
+    loops_are_apart,
     move_sizes_fit,
     limits_fit,
     cv_tags_fit,

@@ -109,11 +109,14 @@ def take_apart(raw: Raw) -> tuple[Parts, list[Complaint]]:
             parts.single[key] = found
     for key, model in NAMED.items():
         parts.named[key] = {}
-        if not isinstance(raw.get(key), Mapping):
+        if not table(raw, key):
             value = raw.get(key, MISSING)
             complaints.append(
                 Complaint(
-                    (key,), value, f"sections [{key}.NAME]", f"write one [{key}.NAME] for each"
+                    (key,),
+                    value,
+                    f"at least one section [{key}.NAME]",
+                    f"write a section [{key}.NAME]",
                 )
             )
         for name in table(raw, key):

@@ -218,7 +218,13 @@ RELATIONS = [
     ("tags.FIC-2106", "s=FIC-2106.PV", "s=FIC-2105.PV", ["tags.FIC-2106.node"], "copied"),
     ("mv.FIC-2103", '"REFLUX-SP"', '"REFLUX-PS"', ["mv.FIC-2103.position"], "`REFLUX-SP`?"),
     ("mv.FIC-2103", '"REFLUX-SP"', '"REFLUX-OP"', ["mv.FIC-2103.position"], "loop_setpoint"),
-    ("mv.FIC-2103", '"REFLUX-SP"', '"TRAY30-SP"', ["mv.FIC-2103.position"], "make the units the"),
+    (
+        "mv.FIC-2103",
+        '"REFLUX-SP"',
+        '"TRAY30-SP"',
+        ["mv.FIC-2103.position", "mv.TIC-2107.position"],
+        "make the units the",
+    ),
     ("mv.FIC-2103", 'd = "FIC-2103"', 'd = "FIC-2101"', ["mv.FIC-2103.measured"], "reflux_flow"),
     ("mv.FIC-2103", '"REFLUX-OP"', '"REFLUX-MODE"', ["mv.FIC-2103.output"], "loop_output"),
     ("mv.FIC-2103", '"REFLUX-MODE"', '"REFLUX-OP"', ["mv.FIC-2103.mode"], "loop_mode"),
@@ -247,6 +253,8 @@ RELATIONS = [
         ["mv.FIC-2103.loop", "mv.FIC-2103.in_ratio_to", "mv.FIC-2103.measured", "mv.TIC-2107.kind"],
         "each kind",
     ),
+    ("mv.TIC-2107", '"TRAY30-OP"', '"REFLUX-OP"', ["mv.TIC-2107.output"], "MV FIC-2103 has it"),
+    ("mv.TIC-2107", '"TRAY30-MODE"', '"REFLUX-MODE"', ["mv.TIC-2107.mode"], "was it copied?"),
     ("mv.FIC-2103", "20.0", "90.0", ["mv.FIC-2103.increment"], "worthwhile_move"),
     ("mv.FIC-2103", "80.0", "210.0", ["mv.FIC-2103.worthwhile_move"], "max_move"),
     ("mv.FIC-2103", "200.0", "3001.0", ["mv.FIC-2103.max_move"], "3000"),
@@ -394,6 +402,18 @@ def test_a_linear_quality_states_its_own_clip(whole: str) -> None:
     with pytest.raises(SiteFileError, match="meant for logarithms") as caught:
         parse_site(text, "site.toml")
     assert [finding.key for finding in caught.value.findings] == ["cv.BOTTOMS.innovation_clip"]
+
+
+@pytest.mark.parametrize("key", ["tags", "mv", "cv", "dv"])
+def test_an_empty_or_absent_list_of_names_is_refused(whole: str, key: str) -> None:
+    raw = tomllib.loads(whole)
+    values: list[object] = [{}, 3, None]
+    for value in values:
+        _, complaints = take_apart({**raw, key: value})
+        assert [complaint.path for complaint in complaints] == [(key,)]
+    del raw[key]
+    _, complaints = take_apart(raw)
+    assert [complaint.path for complaint in complaints] == [(key,)]
 
 
 def test_the_number_of_components_is_said(whole: str) -> None:
