@@ -144,13 +144,13 @@ class Column:
         array, shape (2, 38)
             Holdups after the step [kmol].
         Stages
-            The algebraic quantities at the beginning of the step.
+            The algebraic quantities at the predicted end of the step.
         """
         # Enthalpies and densities move little in a second: once per step is enough.
         self._refresh_properties()
-        first, stages = self.rates(holdup_kmol, inputs)
+        first, _ = self.rates(holdup_kmol, inputs)
         predicted = self._bounded(holdup_kmol + dt_s * first)
-        second, _ = self.rates(predicted, inputs)
+        second, stages = self.rates(predicted, inputs)
         return self._bounded(holdup_kmol + (0.5 * dt_s) * (first + second)), stages
 
     def settle(self, holdup_kmol: Array, inputs: Inputs, rounds: int = 12) -> tuple[Array, Stages]:

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from functools import cache
 from types import MappingProxyType
 from typing import Final
 
@@ -15,7 +16,7 @@ from sim_server.base_layer import READ_ONLY, BaseLayer, Flows
 from sim_server.column import Inputs
 from sim_server.disturbances import Disturbances, Story
 from sim_server.instruments import Analyser, Transmitter
-from sim_server.plant_data import AnalyserData, InstrumentData, load_plant_data
+from sim_server.plant_data import AnalyserData, InstrumentData, PlantData, load_plant_data
 from sim_server.signals import GOOD, Mode, Signal, SignalSpec
 from sim_server.steady import (
     SteadyState,
@@ -37,6 +38,13 @@ DRY_END_KMOL: Final = 1.0
 """Holdup below which the outflow of drum and sump fades out."""
 
 
+@cache
+def _start() -> tuple[PlantData, SteadyState]:
+    """Data and first state, the same for every seed; never changed in place."""
+    data = load_plant_data()
+    return data, operating_point(data)
+
+
 class SimulatedPlant:
     """Column C-2101 with its base layer, instruments and weather (all invented).
 
@@ -49,9 +57,12 @@ class SimulatedPlant:
     """
 
     def __init__(self, seed: int, story: str = "default") -> None:
-        self._data = load_plant_data()
-        state = operating_point(self._data)
-        self._column, self._holdup, self._inputs = state.column, state.holdup_kmol, state.inputs
+        self._data, state = _start()
+        self._column, self._holdup, self._inputs = (
+            state.column.copy(),
+            state.holdup_kmol,
+            state.inputs,
+        )
         self._stages = state.stages
         self._time_s = 0
         self._disturbances = Disturbances(seed, Story(story))
