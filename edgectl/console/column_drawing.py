@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-
 from edgectl.console.history import SiteWords
 from edgectl.console.svg import Drawing, Scale, number_words
 from edgectl.records.advice import Standing
@@ -93,9 +91,7 @@ def _moves(drawing: Drawing, record: DecisionRecord, site: SiteWords, down: Scal
     standing = record.advice.standing
     targets = {move.mv: move.target for move in record.advice.moves}
     for mv, where in record.positions.items():
-        loop = site.mv(mv).get("loop")
-        stage = loop.get("stage") if isinstance(loop, Mapping) else 0
-        y = down(stage if isinstance(stage, int) else 0)
+        y = down(site.stage_of_mv(mv))
         drawing.line((LEFT - 24, y), (LEFT, y), "pipe")
         target = targets.get(mv)
         now = "no value" if where.position is None else number_words(where.position)

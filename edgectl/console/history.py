@@ -98,6 +98,12 @@ class SiteWords:
     def mv(self, name: str) -> Mapping[str, Any]:
         return self._of("mv", name)
 
+    def stage_of_mv(self, name: str) -> int:
+        """Where an MV acts: its loop's stage, or the top."""
+        loop = self.mv(name).get("loop")
+        stage = loop.get("stage") if isinstance(loop, Mapping) else None
+        return stage if isinstance(stage, int) else 0
+
     def tag(self, name: str) -> Mapping[str, Any]:
         return self._of("tags", name)
 
