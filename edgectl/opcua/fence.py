@@ -24,37 +24,37 @@ class FenceError(RuntimeError):
 class WriteFence:
     """Writes values to the listed nodes, and to nothing else.
 
-    Raises PlantMismatchError when an advisory node is also a tag's node or when
-    two advisory names lead to the same node: texts that differ may well name one
-    node, so resolved ids are compared.
+    Parameters
+    ----------
+    uaclient : UaClient
+    nodes : mapping of str to NodeId
+        Every advisory node of the site file that this server can resolve, by name.
+    types : mapping of str to VariantType
+        How to write the ones that fit; a node that is missing here is never written.
+    tags : mapping of str to NodeId
+        Every tag's node: what is read is never written.
+    most_per_call : int
+        Items the server accepts in one Write.
+
+    Raises
+    ------
+    PlantMismatchError
+        An advisory node is also a tag's node or belongs to OPC UA itself, or two
+        names lead to one node. Texts that differ may name the same node, so
+        resolved ids are compared.
     """
 
     def __init__(
         self,
         uaclient: UaClient,
-        allowed: Mapping[str, tuple[NodeId, VariantType]],
+        nodes: Mapping[str, NodeId],
+        types: Mapping[str, VariantType],
         tags: Mapping[str, NodeId],
         most_per_call: int,
     ) -> None:
-        owners = {node: tag for tag, node in tags.items()}
-        types: dict[NodeId, VariantType] = {}
-        for name, (node, variant_type) in allowed.items():
-            if node in owners:
-                raise PlantMismatchError(
-                    f"advisory node {name} is the same node ({node.to_string()}) as tag "
-                    f"{owners[node]}: what is read is never written; name another node"
-                )
-            if node.NamespaceIndex == 0:
-                raise PlantMismatchError(
-                    f"advisory node {name} ({node.to_string()}) belongs to OPC UA itself"
-                )
-            if node in types:
-                raise PlantMismatchError(
-                    f"advisory node {name} ({node.to_string()}) is named twice in the site file"
-                )
-            types[node] = variant_type
+        _check_apart(nodes, tags)
         self._uaclient = uaclient
-        self._types = MappingProxyType(types)
+        self._types = MappingProxyType({nodes[name]: kind for name, kind in types.items()})
         self._most_per_call = most_per_call
 
     def check(self, node: NodeId) -> VariantType:
@@ -80,3 +80,17 @@ class WriteFence:
                 raise UaError(f"{len(nodes[part])} items written, {len(answers)} answered")
             codes += [int(answer.value) for answer in answers]
         return codes
+
+
+def _check_apart(nodes: Mapping[str, NodeId], tags: Mapping[str, NodeId]) -> None:
+    readers = {node: f"tag {tag}: what is read is never written" for tag, node in tags.items()}
+    writers: dict[NodeId, str] = {}
+    for name, node in nodes.items():
+        what = f"advisory node {name} ({node.to_string()})"
+        if node in readers:
+            raise PlantMismatchError(f"{what} is the same node as {readers[node]}")
+        if node in writers:
+            raise PlantMismatchError(f"{what} is the same node as advisory node {writers[node]}")
+        if node.NamespaceIndex == 0:
+            raise PlantMismatchError(f"{what} belongs to OPC UA itself; name another node")
+        writers[node] = name

@@ -63,7 +63,7 @@ async def make_link(
     unusable = {tag.tag: errors[0] for tag in tags
                 if (errors := _errors(tag, facts[tag.tag], first_seen))}  # fmt: skip
     used = [tag for tag in tags if tag.tag not in unusable]
-    ids = {name: item.node_id for name, item in facts.items() if item.node_id is not None}
+    ids = _resolved(facts)
     nodes = [standard_node(number) for number in SERVER_NODES] + [ids[tag.tag] for tag in used]
     fields = {name: (node, kind) for name, node, kind in advice.fields()} if advice else {}
     advisory_facts = await survey_nodes(
@@ -71,10 +71,11 @@ async def make_link(
     )
     problems = {name: judge_advisory(advisory_facts[name], kind)
                 for name, (_, kind) in fields.items()}  # fmt: skip
-    usable = {
-        name: (item.node_id, item.data_type)
+    advisory = _resolved(advisory_facts)
+    types = {
+        name: item.data_type
         for name, item in advisory_facts.items()
-        if not problems[name] and item.node_id is not None and item.data_type is not None
+        if not problems[name] and item.data_type is not None
     }
     link = Link(
         connection=connection,
@@ -84,12 +85,16 @@ async def make_link(
         mismatch=_sentence([unusable[t.tag] for t in tags if t.required and t.tag in unusable]),
         facts=facts,
         advisory_facts=advisory_facts,
-        advisory={name: node for name, (node, _) in usable.items()},
+        advisory={name: advisory[name] for name in types},
         advisory_problem=_sentence([one for found in problems.values() for one in found]),
-        fence=WriteFence(connection.client.uaclient, usable, ids, connection.limits.write),
+        fence=WriteFence(connection.client.uaclient, advisory, types, ids, connection.limits.write),
     )
     await link.read()
     return link
+
+
+def _resolved(facts: Mapping[str, NodeFacts]) -> dict[str, NodeId]:
+    return {name: item.node_id for name, item in facts.items() if item.node_id is not None}
 
 
 def _errors(tag: TagNode, facts: NodeFacts, first_seen: Seen) -> list[Finding]:

@@ -63,6 +63,7 @@ class PlantSession:
         self._failures = 0
         self._next_at: float | None = None
         """On the event loop's clock; None while an attempt is under way."""
+        self._linked_since: float | None = None
         self._linked = asyncio.Event()
         self._first_seen: Seen = {}
         self._task: asyncio.Task[None] | None = None
@@ -121,19 +122,19 @@ class PlantSession:
     async def _supervise(self) -> None:
         loop = asyncio.get_running_loop()
         while True:
-            self._next_at = None
-            began = loop.time()
+            self._next_at = self._linked_since = None
             try:
                 await self._connect_and_watch()
             except PortError as error:
                 self._problem = error
-                pause_s = self._pause_s(error, loop.time() - began)
+                pause_s = self._pause_s(error, loop.time())
             self._next_at = loop.time() + pause_s
             await asyncio.sleep(pause_s)
 
-    def _pause_s(self, error: PortError, lasted_s: float) -> float:
+    def _pause_s(self, error: PortError, now: float) -> float:
         """Count the failure and say how long to wait before the next attempt."""
-        if lasted_s >= self._backoff.steady_after_s and not isinstance(error, ConnectRefusedError):
+        linked_s = 0.0 if self._linked_since is None else now - self._linked_since
+        if linked_s > self._backoff.steady_after_s:
             self._failures = 0
             return 0.0
         self._failures += 1
@@ -147,6 +148,8 @@ class PlantSession:
         try:
             while True:
                 self._link = await self._ready(connection)
+                if self._linked_since is None:
+                    self._linked_since = asyncio.get_running_loop().time()
                 self._linked.set()
                 if await self._lost_within(connection, self._recheck_s(self._link)):
                     raise self._lost(connection)
