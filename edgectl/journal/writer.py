@@ -96,6 +96,7 @@ class SqliteJournal:
         EncodingError
             The entry is not plain finite JSON: a mistake of the caller.
         """
+        asked_at = self._clock.wall()
         columns = columns_of(entry)
         if not self._accepts:
             raise NotJournalledError(f"{self._path} is not open")
@@ -105,7 +106,7 @@ class SqliteJournal:
             )
         answer: asyncio.Future[Receipt] = asyncio.get_running_loop().create_future()
         self._waiting.add(answer)
-        self._queue.put(_Ticket(columns, self._clock.wall(), answer))
+        self._queue.put(_Ticket(columns, asked_at, answer))
         budget = asyncio.timeout(timeout_s)
         try:
             async with budget:
