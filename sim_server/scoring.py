@@ -1,13 +1,16 @@
 """How the plant really did: true values, recorded beside the plant and scored later.
 
 True values go to a file and never to OPC UA: no runtime can peek at them.
+`python -m sim_server.scoring TRUTH.csv` prints the score as JSON.
 """
 
 from __future__ import annotations
 
 import csv
+import json
+import sys
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import asdict, dataclass
 from pathlib import Path
 from typing import Final, TextIO
 
@@ -145,3 +148,22 @@ def _quality(rows: Sequence[Mapping[str, float]], spec: Specification) -> Qualit
             None if aim is None else sum(abs(value - aim) for value in values) / len(values)
         ),
     )
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Print the score of the one truth file that is named; the exit code."""
+    names = sys.argv[1:] if arguments is None else arguments
+    if len(names) != 1:
+        sys.stderr.write("usage: python -m sim_server.scoring TRUTH.csv\n")
+        return 2
+    try:
+        found = score(read_truth(Path(names[0])))
+    except (OSError, ValueError, KeyError) as error:
+        sys.stderr.write(f"sim_server.scoring: {error}\n")
+        return 1
+    sys.stdout.write(json.dumps(asdict(found)) + "\n")
+    return 0
+
+
+if __name__ == "__main__":
+    sys.exit(main())

@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 import io
+import json
 from pathlib import Path
 
 import pytest
 
-from sim_server.scoring import SPECIFICATIONS, TruthFile, read_truth, score
+from sim_server.scoring import SPECIFICATIONS, TruthFile, main, read_truth, score
 
 
 def row(time_s: float, ppm: float = 150.0, water: float = 0.2) -> dict[str, float]:
@@ -59,3 +60,21 @@ def test_a_truth_file_reads_back_without_a_torn_last_row(tmp_path: Path) -> None
         row(30.0) | {"crew_actions": 0.0},
         row(60.0) | {"advice_usable": 0.0, "crew_actions": 1.0},
     ]
+
+
+def test_the_command_prints_the_score_or_says_what_is_wrong(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    path = tmp_path / "truth.csv"
+    path.write_text(
+        "time_s,bottoms_methanol_wt_ppm,distillate_water_wt_pct,reboiler_duty_kw,"
+        "distillate_kg_h,advice_usable,crew_actions\n"
+        "30,100,0.3,5000,7000,1,0\n60,600,0.3,5000,7000,1,2\n"
+    )
+    assert main([str(path)]) == 0
+    said = json.loads(capsys.readouterr().out)
+    assert said["energy_kwh_per_t_distillate"] == pytest.approx(5000.0 / 7.0)
+    assert said["qualities"][0]["in_spec_fraction"] == 0.5
+    assert main([str(tmp_path / "none.csv")]) == 1
+    assert main([]) == 2
+    assert "none.csv" in capsys.readouterr().err
