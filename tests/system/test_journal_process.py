@@ -25,6 +25,13 @@ def big_entry(n: int) -> Entry:
     return Entry(EntryKind.DECISION, n, 1.7e9 + n, {"text": "x" * 30_000})
 
 
+def start_writer(repo_root: Path, path: Path) -> subprocess.Popen[bytes]:
+    script = repo_root / "tests/bench/journal_kills.py"
+    return subprocess.Popen(
+        [sys.executable, str(script), "--write", str(path)], stdout=subprocess.PIPE
+    )
+
+
 @contextmanager
 def files_end_at(size: int) -> Iterator[None]:
     """No file grows beyond `size` bytes: the kernel refuses the write, as on a full disk."""
@@ -52,7 +59,7 @@ async def test_a_full_disk_refuses_and_the_journal_goes_on_afterwards(tmp_path: 
     journal = SqliteJournal(path, PlantClock.real())
     await journal.open()
     await journal.append(big_entry(1), 10.0)
-    with files_end_at(path.with_name("journal.db-wal").stat().st_size + 10_000):
+    with files_end_at(20_000):
         for _ in range(3):
             with pytest.raises(NotJournalledError, match="opens the journal again"):
                 await journal.append(big_entry(2), 10.0)
@@ -67,10 +74,7 @@ async def test_another_process_that_writes_is_named_and_its_death_frees_the_jour
     repo_root: Path, tmp_path: Path
 ) -> None:
     path = tmp_path / "journal.db"
-    script = repo_root / "tests/bench/journal_kills.py"
-    child = subprocess.Popen(
-        [sys.executable, str(script), "--write", str(path)], stdout=subprocess.PIPE
-    )
+    child = start_writer(repo_root, path)
     assert child.stdout is not None
     try:
         assert select.select([child.stdout], [], [], 30.0)[0]
