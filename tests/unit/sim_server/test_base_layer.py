@@ -141,12 +141,12 @@ def test_a_stuck_steam_valve_shows_and_does_not_wind_up_the_master(plant: Simula
     plant.advance(1500.0)
     assert value(plant, "FIC-2104.OP") == 100.0
     assert mean(plant, "FIC-2104.PV", 30) < value(plant, "FIC-2104.SP") - 200.0
-    held = value(plant, "TIC-2107.OP")
-    plant.advance(2100.0)
-    # The integral stands still; what is left is the proportional part on the last degrees.
-    assert value(plant, "TIC-2107.OP") < held + 5.0
+    # What is left above the opening at the start is proportional action alone: 1.406 %/K.
+    proportional = 1.406 * (102.0 - value(plant, "TIC-2107.PV"))
+    assert proportional > 10.0
+    assert value(plant, "TIC-2107.OP") - proportional == pytest.approx(opening, abs=2.5)
     plant.limit_valve("FIC-2104", None)
-    plant.advance(2100.0 + 3000.0)
+    plant.advance(1500.0 + 3000.0)
     assert plant.true_values()["tray30_temp_degc"] == pytest.approx(102.0, abs=1.0)
 
 
