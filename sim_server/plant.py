@@ -46,7 +46,7 @@ def _start() -> tuple[PlantData, SteadyState]:
 
 
 class SimulatedPlant:
-    """Column C-2101 with its base layer, instruments and weather (all invented).
+    """Column C-2101 with base layer, instruments and disturbances (all invented).
 
     Parameters
     ----------

@@ -90,7 +90,7 @@ def test_the_same_seed_gives_the_same_plant() -> None:
     assert dict(one.signals) != dict(other.signals)
 
 
-def test_noise_and_weather_do_not_depend_on_what_the_board_does() -> None:
+def test_noise_and_disturbances_do_not_depend_on_what_the_board_does() -> None:
     left_alone, handled = SimulatedPlant(11), SimulatedPlant(11)
     histories: list[dict[int, float]] = [{}, {}]
     results: list[dict[float, float]] = [{}, {}]
