@@ -48,6 +48,7 @@ def column_from_site(site: Table) -> Column:
         condenser_drop_kpa=table["condenser_drop_kpa"],
         tray=_tray(table["trays"]),
         drum_holdup_kmol=_vessel_holdup_kmol(table["drum"], light, drum_k),
+        drum_capacity_kmol=table["drum"]["volume_m3"] * light.liquid_density_kmol_m3(drum_k),
         sump_holdup_kmol=_vessel_holdup_kmol(table["sump"], heavy, sump_k),
     )
 

@@ -79,6 +79,8 @@ class Column:
     tray: SieveTray | None
     drum_holdup_kmol: float
     sump_holdup_kmol: float
+    drum_capacity_kmol: float = 0.0
+    """Liquid in a full drum; turns a rising level into a flow. 0: not known."""
 
     @property
     def reboiler(self) -> int:

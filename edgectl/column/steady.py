@@ -13,8 +13,11 @@ Newton on stage equations); Squire, W. & Trapp, G. (1998), SIAM Rev. 40, 110-112
 
 from __future__ import annotations
 
+import cmath
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -29,6 +32,7 @@ from edgectl.column.layout import (
     StageState,
     Weirs,
 )
+from edgectl.properties.mathematics import Mathematics
 
 Vector = NDArray[np.float64]
 
@@ -190,17 +194,20 @@ def _first_guess(column: Column, inputs: Inputs, spec: PuritySpecification) -> V
 def _bubble_point_k(column: Column, light: float, pressure_kpa: float) -> float:
     temp_k = column.equilibrium.guess_temp_k(light, pressure_kpa)
     for _ in range(30):
-        probe = column.equilibrium.bubble_residual(np, light, temp_k + 1j * STEP, pressure_kpa)
-        step = -float(np.real(probe)) / (float(np.imag(probe)) / STEP)
+        probe = complex(
+            column.equilibrium.bubble_residual(cmath, light, temp_k + STEP * 1j, pressure_kpa)
+        )
+        step = -probe.real / (probe.imag / STEP)
         temp_k += max(-20.0, min(20.0, step))
         if abs(step) < 1e-9:
             break
     return temp_k
 
 
-def _states(unknowns: NDArray[np.generic], column: Column) -> list[StageState]:
-    table = unknowns[:-2].reshape(column.stages, VARIABLES_PER_STAGE)
-    return [StageState(1.0 / (1.0 + np.exp(-row[0])), *row[1:]) for row in table]
+def _states(xp: Mathematics, unknowns: Sequence[Any], column: Column) -> list[StageState]:
+    width = VARIABLES_PER_STAGE
+    rows = (unknowns[i * width : (i + 1) * width] for i in range(column.stages))
+    return [StageState(1.0 / (1.0 + xp.exp(-row[0])), *row[1:]) for row in rows]
 
 
 @dataclass(frozen=True, slots=True)
@@ -216,14 +223,18 @@ class _Problem:
     specification: PuritySpecification
     flows: tuple[float, float] | None = None
 
-    def residual(self, unknowns: NDArray[np.generic]) -> NDArray[np.generic]:
+    def residual(self, unknowns: Vector) -> Vector:
         """Zero at a steady state; flows in parts of the feed, compositions as logits [-]."""
+        return np.array(self.rows(math, unknowns.tolist()))
+
+    def rows(self, xp: Mathematics, unknowns: Sequence[Any]) -> list[Any]:
+        """The residuals of plain real or complex numbers: those are the fastest here."""
         column, feed = self.model.column, self.inputs.feed_kmol_h
-        states = _states(unknowns, column)
+        states = _states(xp, unknowns, column)
         at = replace(self.inputs, reflux_kmol_h=unknowns[-2], duty_kw=unknowns[-1])
         given = {0: column.drum_holdup_kmol, column.reboiler: column.sump_holdup_kmol}
-        rows = []
-        stages = zip(states, column_rates(np, self.model, states, at), strict=True)
+        rows: list[Any] = []
+        stages = zip(states, column_rates(xp, self.model, states, at), strict=True)
         for i, (state, rates) in enumerate(stages):
             rows += [
                 rates.light_rate * state.holdup / feed / _impurity_scale(state),
@@ -243,7 +254,7 @@ class _Problem:
                 (unknowns[-2] - self.flows[0]) / feed,
                 (distillate - self.flows[1]) / feed,
             ]
-        return np.array(rows)
+        return rows
 
     def jacobian(self, unknowns: Vector) -> Vector:
         """Of `residual`, shape (n, n): one complex step for every third stage at once."""
@@ -265,10 +276,11 @@ class _Problem:
         return jacobian
 
     def _slope(self, unknowns: Vector, columns: list[int]) -> Vector:
-        probe = unknowns.astype(complex)
-        probe[columns] += 1j * STEP
-        slope: Vector = np.imag(self.residual(probe)) / STEP
-        return slope
+        probe: list[Any] = unknowns.tolist()
+        for column in columns:
+            probe[column] += STEP * 1j
+        # Rows that the probe does not reach stay real numbers.
+        return np.array([complex(row).imag for row in self.rows(cmath, probe)]) / STEP
 
 
 def _settle(problem: _Problem, unknowns: Vector) -> Vector:
@@ -304,11 +316,11 @@ def _distillate_kmol_h(inputs: Inputs, spec: PuritySpecification) -> float:
 
 def _impurity_scale(state: StageState) -> float:
     """So that a balance on a nearly pure stage counts in parts of its impurity."""
-    light = float(np.real(state.light))
+    light = complex(state.light).real
     return max(light * (1.0 - light), 1e-9)
 
 
-def _bounded_step(unknowns: Vector, step: Vector) -> Vector:
+def _bounded_step(unknowns: Vector, step: NDArray[np.floating[Any]]) -> Vector:
     """A Newton step cut back so that no flow changes sign and no temperature jumps."""
     limits = np.tile([1.0, np.inf, 10.0, 0.2, np.inf], (unknowns.size - 2) // VARIABLES_PER_STAGE)
     limits = np.concatenate([limits, [np.inf, np.inf]])
@@ -323,7 +335,9 @@ def _finish(problem: _Problem, unknowns: Vector, iterations: int, residual: floa
     model, inputs = problem.model, problem.inputs
     column = model.column
     at = replace(inputs, reflux_kmol_h=float(unknowns[-2]), duty_kw=float(unknowns[-1]))
-    states = [StageState(*(float(v) for v in state)) for state in _states(unknowns, column)]
+    states = [
+        StageState(*(float(v) for v in state)) for state in _states(math, unknowns.tolist(), column)
+    ]
     flows = [float(flow) for flow in liquid_flows(model, states, at)]
     weirs = linear_weirs(column, states, flows, at) if column.tray else _flow_as_holdup(column)
     if column.tray:

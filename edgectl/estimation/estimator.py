@@ -48,6 +48,7 @@ class InputTags:
     tray_temperature: str
     top_pressure: str
     differential_pressure: str | None
+    drum_level: str | None
     feed_temp_degc: float
     column_dp_kpa: float
 
@@ -162,7 +163,16 @@ class BiasEstimator:
             top_pressure_kpa=needed(tags.top_pressure),
             column_dp_kpa=optional(tags.differential_pressure, tags.column_dp_kpa),
             distillate_light=self._distillate_light(state, biases),
+            drum_level=self._drum_level(measured),
         )
+
+    def _drum_level(self, measured: Mapping[str, Measurement]) -> float | None:
+        """Fraction of the drum, only while the tag is usable: a stuck level says nothing."""
+        tag = self.tags.drum_level
+        if tag is None or tag not in measured or not measured[tag].usable:
+            return None
+        value = measured[tag].value
+        return None if value is None else value / 100.0
 
     def _distillate_light(self, state: TrackedState | None, biases: Mapping[str, Bias]) -> float:
         """Bias-corrected purity of the distillate, light mass fraction [-]."""

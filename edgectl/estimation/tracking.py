@@ -26,6 +26,7 @@ KELVIN = 273.15
 LONGEST_STEP_S = 60.0
 SETTLING_H = 8.0
 """Model hours a cold start runs in for, at the present measurements."""
+LEVEL_FILTER_H = 2.0 / 60.0
 HISTORY_S = 2400.0
 """How far back a late analyser result may reach."""
 
@@ -61,6 +62,8 @@ class PlantInputs:
     column_dp_kpa: float
     distillate_light: float
     """Mass fraction light in the distillate, from its analyser [-]."""
+    drum_level: float | None = None
+    """Fraction of the reflux drum's volume [-]; what it gains, left the column too."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,6 +82,8 @@ class TrackedState:
     tray_temp_degc: float
     duty_kw: float
     """Filtered duty of the tracking loop."""
+    drum_level: float
+    """Filtered drum level [-]; NaN when not measured."""
     mismatch_s: float
     """How long the model's tray has been away from the measured one [s]."""
 
@@ -98,10 +103,12 @@ class ModelTracker:
         self.looped = looped
         self.settings = settings
         self._steady = steady_drive(looped, settings.gain_kw_k, settings.reset_h)
+        column = looped.model.column
+        self._drum_kg = column.drum_capacity_kmol * column.light.molar_mass_kg_kmol
 
     def start(self, inputs: PlantInputs, at: float) -> TrackedState:
         """A cold start: the model settled at the present measurements."""
-        looped, settings = self.looped, self.settings
+        looped = self.looped
         feed_light = self._balance_composition(inputs)
         state = TrackedState(
             made_at=at,
@@ -112,6 +119,7 @@ class ModelTracker:
             reflux_kg_h=inputs.reflux_kg_h,
             tray_temp_degc=inputs.tray_temp_degc,
             duty_kw=looped.steady.inputs.duty_kw,
+            drum_level=math.nan if inputs.drum_level is None else inputs.drum_level,
             mismatch_s=0.0,
         )
         drive = replace(self.drive(state, inputs), reset_h=0.5)
@@ -129,12 +137,8 @@ class ModelTracker:
         filtered = replace(
             state,
             made_at=at,
-            feed_light=_filtered(
-                state.feed_light,
-                self._balance_composition(inputs),
-                hours,
-                settings.composition_filter_h,
-            ),
+            feed_light=self._observed_composition(state, inputs, hours),
+            drum_level=self._drum_level(state, inputs, hours),
             feed_kg_h=_filtered(state.feed_kg_h, inputs.feed_kg_h, hours, settings.feed_filter_h),
             ratio_feed_kg_h=_filtered(
                 state.ratio_feed_kg_h, inputs.feed_kg_h, hours, settings.ratio_filter_h
@@ -200,6 +204,36 @@ class ModelTracker:
         fraction = light / max(inputs.feed_kg_h, 1.0)
         settings = self.settings
         return float(min(max(fraction, settings.composition_low), settings.composition_high))
+
+
+    def _drum_level(self, state: TrackedState, inputs: PlantInputs, hours: float) -> float:
+        if inputs.drum_level is None:
+            return math.nan
+        if math.isnan(state.drum_level):
+            return inputs.drum_level
+        return _filtered(state.drum_level, inputs.drum_level, hours, LEVEL_FILTER_H)
+
+    def _observed_composition(
+        self, state: TrackedState, inputs: PlantInputs, hours: float
+    ) -> float:
+        """Feed composition after comparing overheads measured and modelled [-]."""
+        looped, settings = self.looped, self.settings
+        column = looped.model.column
+        point = state.point
+        drum_light = float(point[0])
+        model_kg_h = molar_mass(drum_light, column) * float(point[looped.vapour_at[0]]) - (
+            state.reflux_kg_h
+        )
+        level = self._drum_level(state, inputs, hours)
+        rising_per_h = (level - state.drum_level) / hours
+        stored_kg_h = 0.0 if math.isnan(rising_per_h) else rising_per_h * self._drum_kg
+        measured_kg_h = inputs.distillate_kg_h + stored_kg_h
+        surplus = measured_kg_h * inputs.distillate_light - model_kg_h * mass_fraction(
+            drum_light, column
+        )
+        gain = 1.0 - math.exp(-hours / settings.composition_filter_h)
+        observed = state.feed_light + gain * surplus / max(state.feed_kg_h, 1.0)
+        return min(max(observed, settings.composition_low), settings.composition_high)
 
 
 def _filtered(old: float, new: float, hours: float, time_constant_h: float) -> float:
@@ -311,6 +345,7 @@ def pack(
             state.reflux_kg_h,
             state.tray_temp_degc,
             state.duty_kw,
+            state.drum_level,
             state.mismatch_s,
         ),
         "history_times": tuple(history.times),

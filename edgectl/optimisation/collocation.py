@@ -13,6 +13,7 @@ Waechter, A. & Biegler, L. T. (2006), Math. Program. 106, 25-57 (IPOPT).
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Any
 
 import casadi as ca
@@ -62,6 +63,8 @@ class CollocationEngine:
         Grid, MVs, CVs.
     max_iterations : int
         IPOPT's limit.
+    wall : callable
+        Monotonic seconds, for the soft deadline.
     tolerance : float
         IPOPT's convergence tolerance [-].
     """
@@ -72,7 +75,8 @@ class CollocationEngine:
         self,
         looped: LoopedColumn,
         goals: Goals,
-        max_iterations: int = 60,
+        max_iterations: int,
+        wall: Callable[[], float],
         tolerance: float = 1e-4,
     ) -> None:
         self.looped = looped
@@ -82,7 +86,9 @@ class CollocationEngine:
         self._block = self._points + self._slacks
         self._controls = len(goals.mvs)
         self._interval = _Interval(looped, goals)
-        self._solver = _assemble(self._interval, goals, max_iterations, tolerance)
+        self._deadline = _SoftDeadline(self._interval, goals, wall)
+        options = {"max_iter": max_iterations, "tol": tolerance}
+        self._solver = _assemble(self._interval, goals, options, self._deadline)
 
     def solve(self, situation: Situation, first_guess: Vector, soft_deadline_s: float) -> Solution:
         """Solve from the rollout of a first guess; see `Engine`."""
@@ -95,6 +101,7 @@ class CollocationEngine:
         scale = np.array([mv.scale for mv in goals.mvs])[:, None]
         start = np.concatenate([blocks.ravel(), (guess / scale).T.ravel()])
         lower, upper = self._bounds(situation)
+        self._deadline.start(soft_deadline_s)
         answer = self._solver(
             x0=start,
             p=self._parameters(situation),
@@ -251,7 +258,52 @@ class _Interval:
         return ca.vertcat(rows, *soft), cost
 
 
-def _assemble(interval: _Interval, goals: Goals, max_iterations: int, tolerance: float) -> Any:
+class _SoftDeadline(ca.Callback):
+    """Stops IPOPT after an iteration that ends past the soft deadline; it keeps its iterate."""
+
+    def __init__(self, interval: _Interval, goals: Goals, wall: Callable[[], float]) -> None:
+        ca.Callback.__init__(self)
+        variables = goals.intervals * interval.block + interval.controls * goals.moves
+        rows = goals.intervals * interval.rows + interval.controls * goals.moves
+        parameters = (
+            goals.intervals * interval.parameters + interval.looped.states + interval.controls
+        )
+        self._sizes = {
+            "x": variables,
+            "f": 1,
+            "g": rows,
+            "lam_x": variables,
+            "lam_g": rows,
+            "lam_p": parameters,
+        }
+        self._wall = wall
+        self._ends = 0.0
+        self.construct("soft_deadline", {})
+
+    def start(self, seconds: float) -> None:
+        """Begin counting."""
+        self._ends = self._wall() + seconds
+
+    def get_n_in(self) -> int:
+        return int(ca.nlpsol_n_out())
+
+    def get_n_out(self) -> int:
+        return 1
+
+    def get_name_in(self, index: int) -> str:
+        return str(ca.nlpsol_out(index))
+
+    def get_sparsity_in(self, index: int) -> Any:
+        size = self._sizes[ca.nlpsol_out(index)]
+        return ca.Sparsity.dense(size, 1)
+
+    def eval(self, arg: Any) -> list[Any]:
+        return [1 if self._wall() > self._ends else 0]
+
+
+def _assemble(
+    interval: _Interval, goals: Goals, options: dict[str, Any], deadline: _SoftDeadline
+) -> Any:
     """IPOPT on all intervals, with the block derivatives put in their places."""
     K, looped = goals.intervals, interval.looped
     nb, nu, npar = interval.block, interval.controls, interval.parameters
@@ -273,7 +325,7 @@ def _assemble(interval: _Interval, goals: Goals, max_iterations: int, tolerance:
     weights = ca.DM([mv.move_weight for mv in goals.mvs])
     move_cost = ca.sum1(ca.sum2(ca.repmat(weights, 1, goals.moves) * steps**2))
     cost = ca.sum2(costs) + move_cost
-    program = {"x": x, "p": p, "f": cost, "g": ca.vertcat(ca.vec(rows), ca.vec(steps))}
+    program: Any = {"x": x, "p": p, "f": cost, "g": ca.vertcat(ca.vec(rows), ca.vec(steps))}
 
     places = _Places(interval, goals)
     slopes, gradients = interval.slope.map(K)(starts, blocks, controls, parameters)
@@ -287,15 +339,16 @@ def _assemble(interval: _Interval, goals: Goals, max_iterations: int, tolerance:
         ca.reshape(multiplier[: K * interval.rows], interval.rows, K),
     )
     hessian = places.hessian(curvatures) + ca.triu(factor * ca.hessian(move_cost, x)[0])
-    options = {
+    settings: Any = {
         "print_time": False,
         "grad_f": ca.Function("grad_f", [x, p], [cost, gradient]),
         "jac_g": ca.Function("jac_g", [x, p], [program["g"], jacobian]),
         "hess_lag": ca.Function("hess_lag", [x, p, factor, multiplier], [hessian]),
         "calc_lam_p": False,
-        "ipopt": _IPOPT | {"max_iter": max_iterations, "tol": tolerance},
+        "iteration_callback": deadline,
+        "ipopt": _IPOPT | options,
     }
-    return ca.nlpsol("plan", "ipopt", program, options)
+    return ca.nlpsol("plan", "ipopt", program, settings)
 
 
 class _Places:

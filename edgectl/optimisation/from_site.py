@@ -145,6 +145,7 @@ def _input_tags(site: Table, loop_stage: int) -> InputTags:
         tray_temperature=tray,
         top_pressure=required("top_pressure"),
         differential_pressure=tag("differential_pressure"),
+        drum_level=tag("drum_level"),
         feed_temp_degc=point["feed_temperature_degc"],
         column_dp_kpa=point["column_dp_kpa"],
     )

@@ -16,7 +16,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 from edgectl.column.layout import molar_mass
-from edgectl.column.steady import NoSteadyStateError
 from edgectl.estimation.dynamics import StepFailedError
 from edgectl.estimation.estimator import Belief, MissingInputError
 from edgectl.estimation.outputs import KELVIN
@@ -71,7 +70,7 @@ class Planner:
         self._steady_ms = 1e3 * (wall() - begun)
         self._parts = site_model(site, self.steady)
         self._engine: Engine = CollocationEngine(
-            self._parts.looped, self._parts.goals, site["planning"]["max_iterations"]
+            self._parts.looped, self._parts.goals, site["planning"]["max_iterations"], wall
         )
         model = {key: site[key] for key in ("column", "operating_point", "estimation", "planning")}
         self.model_hash = hashlib.sha256(dumps(model)).hexdigest()
@@ -226,19 +225,19 @@ class Planner:
         goals = self._parts.goals
         low = np.empty((len(goals.mvs), goals.moves))
         high = np.empty_like(low)
-        for j, mv in enumerate(goals.mvs):
+        for j, (mv, increment) in enumerate(zip(goals.mvs, self._increments, strict=True)):
             given, here = at[mv.name], positions[j]
-            service = given.service
-            down = here if service in (Service.FIXED, Service.RAISE_ONLY) else given.low
-            up = here if service in (Service.FIXED, Service.LOWER_ONLY) else given.high
-            reach = mv.max_move * np.arange(1, goals.moves + 1)
-            # Outside its limits an MV comes back at the pace of moves, not in one jump.
-            low[j] = np.minimum(down, here + reach) if here < down else np.minimum(down, here)
-            low[j] = np.where(here > given.high, np.minimum(low[j], here), low[j])
-            high[j] = np.maximum(up, here - reach) if here > up else np.maximum(up, here)
-            if here < down:
-                low[j] = np.minimum(down, here)
-            if service is Service.FIXED:
+            down, up = given.low, given.high
+            if given.service in (Service.FIXED, Service.RAISE_ONLY):
+                down = here
+            if given.service in (Service.FIXED, Service.LOWER_ONLY):
+                up = here
+            # Outside its limits an MV comes back at the pace of moves, not in one jump;
+            # an increment of room keeps a value that can be entered within that pace.
+            reach = mv.max_move * np.arange(1, goals.moves + 1) - increment
+            low[j] = np.minimum(down, np.maximum(here, here + reach))
+            high[j] = np.maximum(up, np.minimum(here, here - reach))
+            if given.service is Service.FIXED:
                 low[j] = high[j] = here
         return low, high
 
@@ -392,6 +391,3 @@ def _value(position: MovePosition) -> float:
     if position.position is None:
         raise MissingInputError(f"the position of {position.mv} is not known")
     return position.position
-
-
-__all__ = ["NoSteadyStateError", "Planner", "build_brain"]

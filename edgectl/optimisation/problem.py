@@ -94,7 +94,7 @@ class Situation:
     high: Vector
     """MV limits per move, shape (mvs, moves); equal to the position when fixed."""
     feed_ratio: Vector
-    """Filtered feed over its present value, per interval: what the ratio station makes of reflux."""
+    """Per interval: filtered feed over its present value, which the ratio station follows [-]."""
     kmol_per_kg: float
     """Of the reflux liquid."""
     bias: Vector
