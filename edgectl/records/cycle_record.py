@@ -104,6 +104,11 @@ class DecisionRecord:
     timings: PhaseTimings
     loop_lag: LoopLag
     provenance: Provenance
+    memory_at: float | None = None
+    """Instant of `memory_in`; None for a cold start."""
+    recomputed_cost_with: float | None = None
+    recomputed_cost_without: float | None = None
+    """What the vetting made of both costs, by its own formula."""
 
 
 @dataclass(frozen=True, slots=True)

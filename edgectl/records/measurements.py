@@ -38,6 +38,9 @@ class Measurement:
     """A result not used before (a changed timestamp, never a changed value)."""
     at_most: bool = False
     """The reading is at or below the analyser's detection limit."""
+    note: str = ""
+    """What people should know about a value: `substituted`, `uncertain`, `no_source_time`,
+    `step_accepted`; empty when there is nothing to say."""
 
     @property
     def usable(self) -> bool:

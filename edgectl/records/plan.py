@@ -185,5 +185,14 @@ class BadInputs:
     tags: tuple[str, ...]
 
 
-Outcome: TypeAlias = Plan | NoPlan | Overrun | WorkerLost | SolverWarming | BadInputs
+@dataclass(frozen=True, slots=True)
+class NoData:
+    """The plant could not be read: there is nothing to judge."""
+
+    why: str
+    mismatch: bool
+    """The server answers, but not as the site file says: needs a person."""
+
+
+Outcome: TypeAlias = Plan | NoPlan | Overrun | WorkerLost | SolverWarming | BadInputs | NoData
 SolveOutcome: TypeAlias = Plan | NoPlan | Overrun | WorkerLost | SolverWarming
