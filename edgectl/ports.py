@@ -58,7 +58,7 @@ class AdviceSink(Protocol):
     """Writes advisory nodes only: it stands behind the write fence."""
 
     async def publish(self, advice: Advice, heartbeat: int, timeout_s: float) -> Delivery:
-        """Write `valid=false`, the values, then the stamps and `valid`; withdraw on a partial failure.
+        """Write `valid=false`, the values, the stamps, `valid`; withdraw on a partial failure.
 
         Never raises for a refused or lost write: the delivery says what happened.
         """

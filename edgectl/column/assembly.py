@@ -1,11 +1,17 @@
-"""The stages in a row: rates and residuals of the whole column."""
+"""The stages in a row: rates and residuals of the whole column.
+
+References
+----------
+Skogestad, S. (1997), Trans. IChemE 75A, 539-562 (structure of tray models, linear
+tray hydraulics); a straight pressure profile between the measured ends: own choice.
+"""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 from typing import Any
 
-from edgectl.column.layout import Column, ColumnModel, Inputs, StageState
+from edgectl.column.layout import Column, ColumnModel, Inputs, Overflow, StageState
 from edgectl.column.stages import (
     StageRates,
     Stream,
@@ -96,6 +102,6 @@ def column_rates(
 
 def _feed_enthalpy(column: Column, inputs: Inputs) -> Any:
     """A liquid feed at its own temperature; saturated under constant molar overflow [kJ/kmol]."""
-    if column.light.liquid_cp:
-        return liquid_enthalpy(inputs.feed_light, inputs.feed_temp_k, column)
-    return 0.0
+    if column.overflow is Overflow.CONSTANT_MOLAR:
+        return 0.0
+    return liquid_enthalpy(inputs.feed_light, inputs.feed_temp_k, column)

@@ -1,4 +1,9 @@
-"""From the site file's `[column]` and `[operating_point]` to the model's values."""
+"""From the site file's `[column]` and `[operating_point]` to the model's values.
+
+References
+----------
+Unit conversions by definition; the correlations' sources stand in `properties`.
+"""
 
 from __future__ import annotations
 
@@ -54,7 +59,20 @@ def column_from_site(site: Table) -> Column:
 
 
 def operating_inputs(site: Table, column: Column) -> Inputs:
-    """Inputs of the operating point; reflux and duty are what the two purities make them."""
+    """Inputs of the operating point; reflux and duty are what the two purities make them.
+
+    Parameters
+    ----------
+    site : mapping
+        The site file's tables, validated.
+    column : Column
+        The column that `column_from_site` made of them.
+
+    Returns
+    -------
+    Inputs
+        Feed [kmol/h], compositions [-], pressures [kPa]; reflux and duty are zero.
+    """
     point = site["operating_point"]
     feed_light = mole_fraction(point["feed_wt_fraction_light"], column)
     feed_mass = (
@@ -74,7 +92,20 @@ def operating_inputs(site: Table, column: Column) -> Inputs:
 
 
 def purity_specification(site: Table, column: Column) -> PuritySpecification:
-    """The two product purities that fix the operating point, as mole fractions [-]."""
+    """The two product purities that fix the operating point.
+
+    Parameters
+    ----------
+    site : mapping
+        The site file's tables, validated.
+    column : Column
+        The column that `column_from_site` made of them.
+
+    Returns
+    -------
+    PuritySpecification
+        Light mole fractions [-].
+    """
     point = site["operating_point"]
     return PuritySpecification(
         distillate_light=mole_fraction(point["distillate_wt_fraction_light"], column),
@@ -83,7 +114,20 @@ def purity_specification(site: Table, column: Column) -> PuritySpecification:
 
 
 def boiling_label_k(table: Table, point: Table) -> float:
-    """Boiling point of the heavy component at the reboiler's pressure, for its density [K]."""
+    """Boiling point of the heavy component at the reboiler's pressure, for its density.
+
+    Parameters
+    ----------
+    table : mapping
+        The site file's `[column]`.
+    point : mapping
+        Its `[operating_point]`.
+
+    Returns
+    -------
+    float
+        Temperature [K].
+    """
     heavy = _antoine(table["component"][1])
     pressure = point["drum_pressure_kpa"] + table["condenser_drop_kpa"] + point["column_dp_kpa"]
     return ModifiedRaoult(heavy, heavy, _wilson(table)).guess_temp_k(0.0, pressure)

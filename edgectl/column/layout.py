@@ -2,6 +2,11 @@
 
 Stage 0 is the reflux drum, stage `stages - 1` the reboiler; trays are numbered
 from the top between them.
+
+References
+----------
+Mole and mass fractions by definition; the model's structure: Skogestad, S.
+(1997), Trans. IChemE 75A, 539-562.
 """
 
 from __future__ import annotations
@@ -84,10 +89,12 @@ class Column:
 
     @property
     def reboiler(self) -> int:
+        """Index of the last stage [-]."""
         return self.stages - 1
 
     @property
     def trays(self) -> range:
+        """Indices of the stages between drum and reboiler [-]."""
         return range(1, self.stages - 1)
 
 
@@ -148,17 +155,56 @@ class ColumnModel:
 
 
 def mole_fraction(mass_fraction: Any, column: Column) -> Any:
-    """Light mole fraction for a light mass fraction [-]."""
+    """Light mole fraction for a light mass fraction.
+
+    Parameters
+    ----------
+    mass_fraction : float, array or symbol
+        Light mass fraction [-].
+    column : Column
+        For the molar masses [kg/kmol].
+
+    Returns
+    -------
+    float, array or symbol
+        Light mole fraction [-].
+    """
     light = mass_fraction / column.light.molar_mass_kg_kmol
     heavy = (1.0 - mass_fraction) / column.heavy.molar_mass_kg_kmol
     return light / (light + heavy)
 
 
 def mass_fraction(light: Any, column: Column) -> Any:
-    """Light mass fraction for a light mole fraction [-]."""
+    """Light mass fraction for a light mole fraction.
+
+    Parameters
+    ----------
+    light : float, array or symbol
+        Light mole fraction [-].
+    column : Column
+        For the molar masses [kg/kmol].
+
+    Returns
+    -------
+    float, array or symbol
+        Light mass fraction [-].
+    """
     return light * column.light.molar_mass_kg_kmol / molar_mass(light, column)
 
 
 def molar_mass(light: Any, column: Column) -> Any:
-    """Of the mixture [kg/kmol]."""
+    """Molar mass of the mixture.
+
+    Parameters
+    ----------
+    light : float, array or symbol
+        Light mole fraction [-].
+    column : Column
+        For the molar masses [kg/kmol].
+
+    Returns
+    -------
+    float, array or symbol
+        Molar mass [kg/kmol].
+    """
     return light * column.light.molar_mass_kg_kmol + (1.0 - light) * column.heavy.molar_mass_kg_kmol

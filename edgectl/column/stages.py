@@ -49,14 +49,46 @@ LATENT_SCALE_KJ_KMOL = 38000.0
 
 
 def liquid_enthalpy(light: Any, temp_k: Any, column: Column) -> Any:
-    """Of a liquid mixture, no heat of mixing [kJ/kmol]."""
+    """Enthalpy of a liquid mixture, no heat of mixing.
+
+    Parameters
+    ----------
+    light : float or symbol
+        Light mole fraction [-].
+    temp_k : float or symbol
+        Temperature [K].
+    column : Column
+        For the components' data.
+
+    Returns
+    -------
+    float or symbol
+        Above liquid at 298.15 K [kJ/kmol].
+    """
     return light * column.light.liquid_enthalpy_kj_kmol(temp_k) + (
         1.0 - light
     ) * column.heavy.liquid_enthalpy_kj_kmol(temp_k)
 
 
 def vapour_enthalpy(xp: Mathematics, light: Any, temp_k: Any, column: Column) -> Any:
-    """Of an ideal vapour: the liquid's plus the heats of vaporisation [kJ/kmol]."""
+    """Enthalpy of an ideal vapour: the liquid's plus the heats of vaporisation.
+
+    Parameters
+    ----------
+    xp : Mathematics
+        `math`, `cmath`, `numpy` or `casadi`.
+    light : float or symbol
+        Light mole fraction of the vapour [-].
+    temp_k : float or symbol
+        Temperature [K].
+    column : Column
+        For the components' data.
+
+    Returns
+    -------
+    float or symbol
+        Above liquid at 298.15 K [kJ/kmol].
+    """
     latent = light * column.light.latent_heat_kj_kmol(xp, temp_k) + (
         1.0 - light
     ) * column.heavy.latent_heat_kj_kmol(xp, temp_k)
@@ -64,14 +96,44 @@ def vapour_enthalpy(xp: Mathematics, light: Any, temp_k: Any, column: Column) ->
 
 
 def liquid_leaving(here: StageState, flow: Any, column: Column) -> Stream:
-    """The liquid stream out of a stage at its own composition and temperature."""
+    """The liquid stream out of a stage at its own composition and temperature.
+
+    Parameters
+    ----------
+    here : StageState
+        The stage.
+    flow : float or symbol
+        Liquid that leaves [kmol/h].
+    column : Column
+        For the components' data.
+
+    Returns
+    -------
+    Stream
+        Flow [kmol/h], composition [-], enthalpy [kJ/kmol].
+    """
     if column.overflow is Overflow.CONSTANT_MOLAR:
         return Stream(flow, here.light, 0.0)
     return Stream(flow, here.light, liquid_enthalpy(here.light, here.temp_k, column))
 
 
 def vapour_leaving(xp: Mathematics, here: StageState, column: Column) -> Stream:
-    """The vapour stream out of a stage."""
+    """The vapour stream out of a stage.
+
+    Parameters
+    ----------
+    xp : Mathematics
+        `math`, `cmath`, `numpy` or `casadi`.
+    here : StageState
+        The stage.
+    column : Column
+        For the components' data.
+
+    Returns
+    -------
+    Stream
+        Flow [kmol/h], composition [-], enthalpy [kJ/kmol].
+    """
     if column.overflow is Overflow.CONSTANT_MOLAR:
         return Stream(here.vapour, here.vapour_light, LATENT_SCALE_KJ_KMOL)
     return Stream(
@@ -82,7 +144,22 @@ def vapour_leaving(xp: Mathematics, here: StageState, column: Column) -> Stream:
 
 
 def drum(here: StageState, vapour_in: Stream, column: Column) -> StageRates:
-    """Total condenser and reflux drum: perfect level control, given temperature."""
+    """Total condenser and reflux drum: perfect level control, given temperature.
+
+    Parameters
+    ----------
+    here : StageState
+        The drum.
+    vapour_in : Stream
+        From the top tray [kmol/h].
+    column : Column
+        For the drum's temperature [K].
+
+    Returns
+    -------
+    StageRates
+        Rates per hour [1/h], residuals zero at a solution [-].
+    """
     return StageRates(
         light_rate=vapour_in.flow * (vapour_in.light - here.light) / here.holdup,
         holdup_rate=0.0 * here.holdup,
@@ -103,7 +180,28 @@ def tray(
     efficiency: Any,
     column: Column,
 ) -> StageRates:
-    """One tray with Murphree efficiency and a quasi-steady energy balance."""
+    """One tray with Murphree efficiency and a quasi-steady energy balance.
+
+    Parameters
+    ----------
+    xp : Mathematics
+        `math`, `cmath`, `numpy` or `casadi`.
+    here : StageState
+        The tray.
+    liquid_in, vapour_in, feed, liquid_out : Stream
+        From above, from below, from outside, and to below [kmol/h].
+    pressure_kpa : float or symbol
+        Pressure [kPa].
+    efficiency : float or symbol
+        Murphree vapour efficiency [-].
+    column : Column
+        Options and components.
+
+    Returns
+    -------
+    StageRates
+        Rates per hour [1/h], residuals zero at a solution [-].
+    """
     vapour_out = vapour_leaving(xp, here, column)
     equilibrium = column.equilibrium
     star = equilibrium.vapour_light(xp, here.light, here.temp_k, pressure_kpa)
@@ -136,7 +234,28 @@ def reboiler(
     pressure_kpa: Any,
     column: Column,
 ) -> StageRates:
-    """Equilibrium reboiler with the sump's holdup under perfect level control."""
+    """Equilibrium reboiler with the sump's holdup under perfect level control.
+
+    Parameters
+    ----------
+    xp : Mathematics
+        `math`, `cmath`, `numpy` or `casadi`.
+    here : StageState
+        The reboiler.
+    liquid_in : Stream
+        From the bottom tray [kmol/h].
+    duty_kw : float or symbol
+        Heat put in [kW].
+    pressure_kpa : float or symbol
+        Pressure [kPa].
+    column : Column
+        Options and components.
+
+    Returns
+    -------
+    StageRates
+        Rates per hour [1/h], residuals zero at a solution [-].
+    """
     vapour_out = vapour_leaving(xp, here, column)
     enthalpy = liquid_leaving(here, 0.0, column).enthalpy
     equilibrium = column.equilibrium

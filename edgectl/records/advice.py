@@ -45,7 +45,7 @@ class Advice:
     """The newest cycle whose vetted plan supports the values."""
     moves: tuple[SuggestedMove, ...]
     notices: tuple[str, ...]
-    """Sentences the operator should read beside the suggestion (an analyser out, a limit that gives way)."""
+    """Sentences to read beside the suggestion: an analyser out, a limit that gives way."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -85,7 +85,8 @@ class DecisionRecord:
     memory_in: Memory
     """The memory the request carried: with it and the measurements, `replay` can solve again."""
     outcome: str
-    """`plan`, `no_plan`, `overrun`, `worker_lost`, `solver_warming`, `bad_inputs`, `no_data`, `not_asked`."""
+    """`plan`, `no_plan`, `overrun`, `worker_lost`, `solver_warming`, `bad_inputs`, `no_data`
+    or `not_asked`."""
     outcome_detail: str
     estimate: Estimate | None
     times_min: tuple[float, ...]
@@ -141,7 +142,8 @@ class EventRecord:
     """Tag, MV, CV or edge concerned; empty when none."""
     raised: bool
     severity: str
-    """One of NE 107's four signals: failure, function_check, out_of_specification, maintenance_required."""
+    """Modelled on NE 107: failure, function_check, out_of_specification or
+    maintenance_required."""
     cycles: int
     sentence: str
 

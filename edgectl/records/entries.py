@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from enum import StrEnum
 from typing import TypeAlias, Union
 
-Json: TypeAlias = Union[None, bool, int, float, str, "list[Json]", "dict[str, Json]"]
+Json: TypeAlias = Union[bool, int, float, str, "list[Json]", "dict[str, Json]", None]
 
 
 class EntryKind(StrEnum):
