@@ -205,15 +205,11 @@ def _refused(policy: TagPolicy, before: TagMemory, verdict: Verdict, now: float)
         and before.value is not None
         and before.value <= policy.analyser.detection_limit
     )
-    return Measurement(
-        policy.tag, before.value, verdict, before.sample_time, age_s, False, at_most
-    )
+    return Measurement(policy.tag, before.value, verdict, before.sample_time, age_s, False, at_most)
 
 
 def _substituted(found: Measurement, policy: TagPolicy, now: float) -> Measurement:
     """The configured stand-in where a tag is not usable; its verdict keeps saying why."""
     if found.usable or policy.substitute is None:
         return found
-    return replace(
-        found, value=policy.substitute, sample_time=now, age_s=0.0, note="substituted"
-    )
+    return replace(found, value=policy.substitute, sample_time=now, age_s=0.0, note="substituted")
