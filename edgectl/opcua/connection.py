@@ -211,7 +211,15 @@ async def open_connection(address: ServerAddress) -> Connection:
             "security 'none' sends everything in clear text and is for testing only: "
             "set server.allow_insecure = true to say that you mean it",
         )
-    await _check_endpoints(address)
+    try:
+        async with asyncio.timeout(address.connect_timeout_s):
+            await _check_endpoints(address)
+            return await _activated(address)
+    except LINK_ERRORS as error:
+        raise _refused(address, error) from error
+
+
+async def _activated(address: ServerAddress) -> Connection:
     client = _new_client(address)
     connection = Connection(client, address)
 
@@ -220,13 +228,9 @@ async def open_connection(address: ServerAddress) -> Connection:
 
     client.connection_lost_callback = transport_lost
     try:
-        async with asyncio.timeout(address.connect_timeout_s):
-            await client.connect()
-            await connection.learn_namespaces()
-    except LINK_ERRORS as error:
-        await close_client(client)
-        raise _refused(address, error) from error
-    except asyncio.CancelledError:
+        await client.connect()
+        await connection.learn_namespaces()
+    except BaseException:  # a cancelled attempt must not leak its socket and tasks either
         await close_client(client)
         raise
     return connection
@@ -267,10 +271,7 @@ async def _check_endpoints(address: ServerAddress) -> None:
     """Ask without a session what the server offers, and refuse what the site file does not want."""
     client = _new_client(address)
     try:
-        async with asyncio.timeout(address.connect_timeout_s):
-            offered = await client.connect_and_get_server_endpoints()
-    except LINK_ERRORS as error:
-        raise _refused(address, error) from error
+        offered = await client.connect_and_get_server_endpoints()
     finally:
         await close_client(client)
     choose_endpoint(address, offered)

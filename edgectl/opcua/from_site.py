@@ -2,18 +2,26 @@
 
 from __future__ import annotations
 
+from typing import Final
+
 from edgectl.opcua.address import AdviceNodes, MoveNodes, ServerAddress, TagNode
 from edgectl.settings.site import Site
+
+_STEP_TIMEOUT_S: Final = 4.0
 
 
 def server_address(site: Site, password: str | None) -> ServerAddress:
     """The server as the site file names it; the password comes from elsewhere."""
+    step_timeout_s = max(_STEP_TIMEOUT_S, site.server.read_timeout_s, site.server.write_timeout_s)
     return ServerAddress(
         endpoint=site.server.endpoint,
         security=site.server.security,
         allow_insecure=site.server.allow_insecure,
         user=site.server.user,
         password=password,
+        # The library's own limit for each call must not undercut the cycle's.
+        step_timeout_s=step_timeout_s,
+        connect_timeout_s=3.0 * step_timeout_s,
     )
 
 

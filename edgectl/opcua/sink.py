@@ -67,10 +67,16 @@ class _Writing:
         self.items: list[ItemStatus] = []
         self.valid = False
         """Whether `valid=true` of this delivery stands, or may stand, at the server."""
+        self.unanswered = False
+        """Whether the last run of steps ended for want of an answer."""
+
+    def abandon(self, why: str) -> None:
+        self._link.connection.abandon(why)
 
     async def run(self, steps: Iterable[Fields], timeout_s: float) -> str | None:
         """What went wrong, or None. FenceError is a bug and passes through."""
         budget = asyncio.timeout(timeout_s)
+        self.unanswered = False
         try:
             async with budget:
                 for fields in steps:
@@ -80,6 +86,7 @@ class _Writing:
         except TimeoutError:
             if not budget.expired():
                 raise
+            self.unanswered = True
             return f"the server did not answer the writes within {timeout_s:.1f} s"
         return None
 
@@ -100,8 +107,9 @@ class _Writing:
         except UnwritableValueError as error:
             raise _NotWrittenError(f"not written: {error}") from error
         except LINK_ERRORS as error:
-            self._link.connection.abandon(f"write failed ({error or type(error).__name__})")
-            raise _NotWrittenError(f"write failed ({error or type(error).__name__})") from error
+            why = f"write failed ({error or type(error).__name__})"
+            self.abandon(why)
+            raise _NotWrittenError(why) from error
         answers = dict(zip(fields, codes, strict=True))
         self.items += [ItemStatus(name, code) for name, code in answers.items()]
         if "valid" in fields:
@@ -150,6 +158,8 @@ class OpcUaAdviceSink:
     ) -> Delivery:
         """The delivery after a withdrawal; `problem` is what led to it, if anything."""
         second = await writing.run(steps, timeout_s)
+        if writing.unanswered:
+            writing.abandon("no answer to a withdrawal")
         if second is not None and second != problem:
             problem = f"{problem}; withdrawing: {second}" if problem else second
         if writing.valid:

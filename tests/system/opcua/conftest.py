@@ -223,6 +223,7 @@ class Plant:
         for name, kind in ADVISORY.items():
             self.show(name, BLANK.get(kind, 0), kind)
         self.show(ua.ObjectIds.Server_ServerStatus_State, 0, V.Int32)
+        self.show(ua.ObjectIds.Server_ServiceLevel, 255, V.Byte)
         self.show(ua.ObjectIds.Server_NamespaceArray, [*NAMESPACES], V.String)
         self.limit_read(10000)
         self.service.writes.clear()

@@ -15,7 +15,7 @@ from edgectl.opcua.fence import FenceError
 from edgectl.opcua.link import make_link
 from edgectl.opcua.sink import OpcUaAdviceSink
 from edgectl.opcua.source import OpcUaTagSource
-from edgectl.ports import PlantMismatchError
+from edgectl.ports import PlantMismatchError, PlantUnreachableError
 from edgectl.records.advice import Advice, Standing, SuggestedMove
 
 pytestmark = pytest.mark.asyncio
@@ -189,6 +189,8 @@ async def test_an_unanswered_last_write_is_reported_as_possibly_standing(
         began = time.monotonic()
         delivery = await OpcUaAdviceSink(session).publish(advice(), 41, 0.5)
         assert time.monotonic() - began < 0.8
+        with pytest.raises(PlantUnreachableError, match="no answer to a withdrawal"):
+            session.link()
     assert (delivery.valid, delivery.complete) == (True, False)
     assert "valid=true may stand at the server until valid_until" in str(delivery.problem)
     assert plant.value("ADV.valid") is True

@@ -132,15 +132,24 @@ async def test_a_range_that_changes_while_running_is_refused(
             await OpcUaTagSource(session, kit.clock).read(1, 1.0)
 
 
-async def test_a_server_that_does_not_run_is_not_believed(plant: Any, kit: Any) -> None:
+@pytest.mark.parametrize(
+    ("node", "value", "kind", "words"),
+    [
+        (ua.ObjectIds.Server_ServerStatus_State, 3, V.Int32, r"not running \(state Suspended"),
+        (ua.ObjectIds.Server_ServiceLevel, 1, V.Byte, r"not running \(service level 1"),
+    ],
+)
+async def test_a_server_that_does_not_run_is_not_believed(
+    plant: Any, kit: Any, node: int, value: int, kind: ua.VariantType, words: str
+) -> None:
     async with kit.session(plant.port) as session:
         await session.wait_linked(5.0)
         source = OpcUaTagSource(session, kit.clock)
-        plant.show(ua.ObjectIds.Server_ServerStatus_State, 3, V.Int32)
-        with pytest.raises(PlantUnreachableError, match=r"not running \(state Suspended"):
+        plant.show(node, value, kind)
+        with pytest.raises(PlantUnreachableError, match=words):
             await source.read(1, 1.0)
         assert source.server_running is False
-        plant.show(ua.ObjectIds.Server_ServerStatus_State, 0, V.Int32)
+        plant.reset()
         await source.read(2, 1.0)
         assert source.server_running is True
 
