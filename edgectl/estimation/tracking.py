@@ -233,7 +233,7 @@ class ModelTracker:
         )
         gain = 1.0 - math.exp(-hours / settings.composition_filter_h)
         observed = state.feed_light + gain * surplus / max(state.feed_kg_h, 1.0)
-        return min(max(observed, settings.composition_low), settings.composition_high)
+        return float(min(max(observed, settings.composition_low), settings.composition_high))
 
 
 def _filtered(old: float, new: float, hours: float, time_constant_h: float) -> float:

@@ -113,7 +113,9 @@ class CollocationEngine:
             ),
         )
         statistics = self._solver.stats()
-        moves = np.array(answer["x"]).ravel()[-self._controls * goals.moves :]
+        found = np.array(answer["x"]).ravel()
+        blocks = found[: goals.intervals * self._block].reshape(goals.intervals, self._block)
+        moves = found[-self._controls * goals.moves :]
         moves = moves.reshape(goals.moves, self._controls).T * scale
         return Solution(
             moves=np.clip(moves, situation.low, situation.high),
@@ -121,6 +123,7 @@ class CollocationEngine:
             converged=bool(statistics["success"]),
             iterations=int(statistics["iter_count"]),
             cost=float(answer["f"]),
+            points=blocks[:, : self._points] * np.tile(looped.scale, 2),
         )
 
     def _longest_moves(self) -> Vector:

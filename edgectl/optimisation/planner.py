@@ -267,13 +267,15 @@ class Planner:
             return NoPlan(request.request_id, "no_plan", sentence, statistics, belief.estimate)
         rounded = self._rounded(situation, solution.moves)
         held = np.tile(situation.positions[:, None], (1, goals.moves))
-        with_moves = roll_out(looped, goals, situation, rounded)
-        without = roll_out(looped, goals, situation, held)
+        # Only a converged trajectory is a good guess; a stopped one may be anywhere.
+        near = solution.points if solution.converged else None
+        with_moves = roll_out(looped, goals, situation, rounded, near)
+        without = roll_out(looped, goals, situation, held, with_moves.points)
         alone = {}
         for j, mv in enumerate(goals.mvs):
             only = held.copy()
             only[j] = rounded[j]
-            alone[mv.name] = roll_out(looped, goals, situation, only)
+            alone[mv.name] = roll_out(looped, goals, situation, only, with_moves.points)
         return Plan(
             request_id=request.request_id,
             cycle=request.cycle,

@@ -117,6 +117,8 @@ class Solution:
     converged: bool
     iterations: int
     cost: float
+    points: Vector
+    """The engine's own trajectory, unscaled, shape (intervals, 2 size)."""
 
 
 class Engine(Protocol):

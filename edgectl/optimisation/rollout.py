@@ -23,7 +23,13 @@ class Rollout:
     """CVs at the interval ends in planning coordinates without bias, shape (cvs, intervals)."""
 
 
-def roll_out(looped: LoopedColumn, goals: Goals, situation: Situation, moves: Vector) -> Rollout:
+def roll_out(
+    looped: LoopedColumn,
+    goals: Goals,
+    situation: Situation,
+    moves: Vector,
+    near: Vector | None = None,
+) -> Rollout:
     """Integrate the looped column over the horizon.
 
     Parameters
@@ -36,6 +42,8 @@ def roll_out(looped: LoopedColumn, goals: Goals, situation: Situation, moves: Ve
         Start and drives.
     moves : array, shape (mvs, moves)
         In the MVs' units.
+    near : array, shape (intervals, 2 size), optional
+        Points of a similar future: a better guess for each step, the same answer.
 
     Returns
     -------
@@ -53,7 +61,7 @@ def roll_out(looped: LoopedColumn, goals: Goals, situation: Situation, moves: Ve
     points = np.empty((goals.intervals, 2 * looped.size))
     for k, hours in enumerate(goals.grid_h):
         drive = interval_drive(goals, situation, list(values[:, k]), k)
-        points[k] = looped.advance(start, guess, drive, hours)
+        points[k] = looped.advance(start, guess if near is None else near[k], drive, hours)
         end = points[k, looped.size :]
         start = end[looped.state_at]
         guess = np.tile(end, 2)
