@@ -95,8 +95,12 @@ def solve_histogram(times_ms: Sequence[float], budget_ms: float) -> str:
             inside = (index + 1) * highest / bins <= budget_ms
             hint = f"{count} solves, {number_words(index * highest / bins)} ms and more"
             drawing.rectangle(
-                x + 0.5, up(count), x2 - x - 1, bottom - up(count),
-                "bar" if inside else "bar late", hint,
+                x + 0.5,
+                up(count),
+                x2 - x - 1,
+                bottom - up(count),
+                "bar" if inside else "bar late",
+                hint,
             )
     _budget_mark(drawing, across(budget_ms), top, bottom)
     _wall_axis(drawing, across, bottom, left, right)
@@ -137,9 +141,7 @@ def _budget_mark(drawing: Drawing, x: float, top: float, bottom: float) -> None:
     drawing.text(x - 5, top + 5, "budget", "small strong", "end")
 
 
-def _wall_axis(
-    drawing: Drawing, across: Scale, bottom: float, left: float, right: float
-) -> None:
+def _wall_axis(drawing: Drawing, across: Scale, bottom: float, left: float, right: float) -> None:
     drawing.line((left, bottom), (right, bottom), "axis")
     for tick in across.ticks(6):
         drawing.line((across(tick), bottom), (across(tick), bottom + 5), "axis")

@@ -65,8 +65,14 @@ class Child:
             raise ChildError(f"{self.name} ended with code {self.exit_code}: {self.last_words()}")
         return line.decode("utf-8", "replace")
 
-    async def wait(self) -> int:
-        return await self._process.wait()
+    async def write_line(self, line: str) -> None:
+        """A line on its standard input. Raises ChildError when it is gone."""
+        assert self._process.stdin is not None
+        try:
+            self._process.stdin.write(line.encode("utf-8") + b"\n")
+            await self._process.stdin.drain()
+        except (BrokenPipeError, ConnectionResetError) as error:
+            raise ChildError(f"{self.name} is gone: {self.last_words()}") from error
 
     async def end(self) -> None:
         """Ask it to end, and end it if it does not. Safe to call twice."""

@@ -72,9 +72,7 @@ def _shelves(drawing: Drawing, profile: tuple[ProfileStage, ...], down: Scale) -
             f"stage {stage.stage}: {number_words(stage.temperature_degc)} °C,"
             f" {100 * stage.liquid_fraction:.1f} mol % light"
         )
-        drawing.rectangle(
-            LEFT + 4, y, fill(stage.liquid_fraction) - LEFT - 4, thick, "light", hint
-        )
+        drawing.rectangle(LEFT + 4, y, fill(stage.liquid_fraction) - LEFT - 4, thick, "light", hint)
 
 
 def _feed(drawing: Drawing, site: SiteWords, down: Scale) -> None:

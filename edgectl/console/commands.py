@@ -17,6 +17,21 @@ Function = TypeVar("Function", bound=Callable[..., Any])
 FILE = click.Path(path_type=Path, exists=True, dir_okay=False)
 NEW_FILE = click.Path(path_type=Path, dir_okay=False)
 FOLDER = click.Path(path_type=Path, file_okay=False)
+HOURS = click.FloatRange(0.0, 1000.0, min_open=True)
+SPEED = click.FloatRange(0.0, 1000.0, min_open=True)
+
+# The simulated plant's words; it is another process, so they are spelt here once more.
+CREWS = ("follows", "late", "part", "ignores", "opposes")
+DRILLS = (
+    "none",
+    "slow-solver",
+    "bad-quality",
+    "server-drop",
+    "frozen-analyser",
+    "loop-manual",
+    "valve-limit",
+    "operator-off",
+)
 
 
 class Instant(click.ParamType[float]):
@@ -45,6 +60,11 @@ def json_option(function: Function) -> Function:
     return option(function)
 
 
+def no_color_option(function: Function) -> Function:
+    """`--no-color`; NO_COLOR in the environment does the same."""
+    return click.option("--no-color", is_flag=True, help="No colours.")(function)
+
+
 @click.group(context_settings={"help_option_names": ["-h", "--help"]})
 @click.version_option(package_name="edgectl")
 def main() -> None:
@@ -53,6 +73,86 @@ def main() -> None:
     Exit codes: 0 done and good, 1 done with a finding, 2 wrong usage,
     75 plant not reachable, 78 site file wrong.
     """
+
+
+@main.command()
+@click.option("--hours", type=HOURS, help="Simulated hours (default: 1, if the machine can).")
+@click.option("--speed", type=SPEED, help="Plant time per real time (default: measured).")
+@click.option(
+    "--crew",
+    type=click.Choice(CREWS),
+    default="follows",
+    show_default=True,
+    help="What the simulated operators do with the advice.",
+)
+@click.option(
+    "--seed",
+    type=click.IntRange(0),
+    default=1,
+    show_default=True,
+    help="Of noise, disturbances and crew.",
+)
+@click.option(
+    "--drill",
+    type=click.Choice(DRILLS),
+    default="none",
+    show_default=True,
+    help="A fault that happens on the way.",
+)
+@click.option("--keep", type=FOLDER, help="Folder for all it leaves (default: a new one in runs/).")
+@no_color_option
+@json_option
+def demo(
+    hours: float | None,
+    speed: float | None,
+    crew: str,
+    seed: int,
+    drill: str,
+    keep: Path | None,
+    no_color: bool,
+    json_target: str | None,
+) -> None:
+    """Advise a simulated column, from nothing to the report.
+
+    Starts an invented methanol/water column behind a real OPC UA server, and the
+    production runtime beside it. Ends by itself and stops all it started.
+    """
+    from edgectl.console.demo import DemoOptions, demo_command
+
+    options = DemoOptions(hours, speed, crew, seed, drill, keep, json_target, no_color)
+    raise SystemExit(demo_command(options))
+
+
+@main.command()
+@click.argument("site", type=FILE)
+@no_color_option
+@json_option
+def check(site: Path, no_color: bool, json_target: str | None) -> None:
+    """Compare the plant with the site file, and solve the operating point. Writes nothing."""
+    from edgectl.console.check_command import check_command
+
+    raise SystemExit(check_command(site, json_target, no_color))
+
+
+@main.command()
+@click.argument("site", type=FILE)
+@click.option(
+    "--journal",
+    type=FOLDER,
+    default=Path("journal"),
+    show_default=True,
+    help="Folder of the journal; made if it is not there.",
+)
+@click.option("--cycles", type=click.IntRange(1), help="End after so many cycles.")
+@click.option("--rehearsal", is_flag=True, hidden=True, help="Orders come on standard input.")
+@json_option
+def run(
+    site: Path, journal: Path, cycles: int | None, rehearsal: bool, json_target: str | None
+) -> None:
+    """Advise the plant that the site file describes, until it is told to stop."""
+    from edgectl.console.run_command import run_command
+
+    raise SystemExit(run_command(site, journal, cycles, rehearsal, json_target))
 
 
 @main.command()

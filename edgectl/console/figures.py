@@ -166,8 +166,9 @@ def unused_tags(decisions: Sequence[DecisionRecord]) -> list[UnusedTag]:
                 last_at[tag] = decision.made_at
     newest = decisions[-1].made_at if decisions else math.nan
     found = [
-        UnusedTag(tag, sum(why.values()), why.most_common(1)[0][0], last_at[tag],
-                  last_at[tag] == newest)
+        UnusedTag(
+            tag, sum(why.values()), why.most_common(1)[0][0], last_at[tag], last_at[tag] == newest
+        )
         for tag, why in verdicts.items()
     ]
     return sorted(found, key=lambda tag: (-tag.cycles, tag.tag))

@@ -110,9 +110,7 @@ class SiteWords:
     def tray_tags(self) -> dict[str, int]:
         """Tags that measure a stage's temperature, with their stage."""
         tags = self._of("tags").items()
-        return {
-            name: tag["stage"] for name, tag in tags if isinstance(tag.get("stage"), int)
-        }
+        return {name: tag["stage"] for name, tag in tags if isinstance(tag.get("stage"), int)}
 
     def _of(self, *path: str) -> Mapping[str, Any]:
         found: Any = self._content
@@ -121,9 +119,7 @@ class SiteWords:
         return found if isinstance(found, Mapping) else {}
 
 
-def read_history(
-    path: Path, begin: float | None = None, end: float | None = None
-) -> History:
+def read_history(path: Path, begin: float | None = None, end: float | None = None) -> History:
     """The history with begin <= time < end of plant time [s].
 
     Starts of the runtime before `begin` are in it too: a stretch is read with the site file

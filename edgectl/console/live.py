@@ -45,22 +45,18 @@ STANDING_STYLE: Final = {
 class LiveView:
     """Shows one decision after another. Use it as a context manager.
 
-    Parameters
-    ----------
-    console : Console
-    begin, end : float or None
-        Plant time of the run [s]; without an end there is no progress to show.
+    `run` says how long the run will be; without it there is no progress to show.
     """
 
-    def __init__(self, console: Console, begin: float, end: float | None) -> None:
+    def __init__(self, console: Console) -> None:
         self._console = console
-        self._begin, self._end = begin, end
+        self._begin: float | None = None
+        self._plant_s: float | None = None
         self._events: deque[str] = deque(maxlen=5)
         self._solves: deque[float] = deque(maxlen=32)
         self._profile: tuple[ProfileStage, ...] = ()
         self._said: tuple[object, ...] = ()
         self._quiet_cycles = 0
-        self._stage_words = "Waiting for the first cycle."
         self._live = Live(console=console, auto_refresh=False, transient=False)
 
     def __enter__(self) -> Self:
@@ -79,11 +75,14 @@ class LiveView:
 
     def stage(self, words: str) -> None:
         """What is being prepared, before the first cycle."""
-        self._stage_words = words
         if self._console.is_terminal:
             self._live.update(Text(words, style="bold"), refresh=True)
         else:
             self._console.print(Text(words))
+
+    def run(self, plant_s: float) -> None:
+        """From the first decision on, the run lasts so long [plant s]."""
+        self._plant_s = plant_s
 
     def event(self, words: str) -> None:
         self._events.append(words)
@@ -93,6 +92,7 @@ class LiveView:
     def show(self, decision: DecisionRecord, site: SiteWords) -> None:
         if decision.estimate is not None and decision.estimate.profile:
             self._profile = decision.estimate.profile
+        self._begin = decision.made_at if self._begin is None else self._begin
         if decision.timings.solve_ms > 0.0:
             self._solves.append(decision.timings.solve_ms)
         if self._console.is_terminal:
@@ -159,9 +159,9 @@ class LiveView:
         return line
 
     def _progress(self, decision: DecisionRecord) -> Iterator[Text]:
-        if self._end is None:
+        if self._plant_s is None or self._begin is None:
             return
-        total = max(self._end - self._begin, 1e-9)
+        total = max(self._plant_s, 1e-9)
         done = min(max(decision.made_at - self._begin, 0.0), total)
         line = Text("run    ")
         line.append(bar(done / total, 20))

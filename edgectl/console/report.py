@@ -189,9 +189,7 @@ def _solves(history: History) -> str:
     if lag is not None:
         words += f" The event loop was never later than {number_words(lag)} ms."
     return (
-        "<h2>Time</h2>"
-        + _p(words)
-        + f"<div class='pair'><div><h3>How often it took how long</h3>"
+        "<h2>Time</h2>" + _p(words) + f"<div class='pair'><div><h3>How often it took how long</h3>"
         f"{charts.solve_histogram(times, budget)}</div>"
         f"<div><h3>How far the tail reaches</h3>{charts.solve_tail(times, budget)}</div></div>"
         + "<h3>Every overrun, and what was held</h3>"

@@ -53,9 +53,7 @@ def write_report(history: History, chain: ChainReport, journal: Path, out: Path)
     write_text(out, report_page(history, words, journal.name))
 
 
-def _content(
-    history: History, chain: ChainReport, journal: Path, out: Path
-) -> dict[str, object]:
+def _content(history: History, chain: ChainReport, journal: Path, out: Path) -> dict[str, object]:
     latest = history.latest
     late = overruns(history.decisions)
     return {

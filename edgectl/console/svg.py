@@ -134,9 +134,7 @@ class Drawing:
             f"<{name}{words}>{escaped(content)}</{name}>" if content else f"<{name}{words}/>"
         )
 
-    def text(
-        self, x: float, y: float, words: str, class_: str = "", anchor: str = "start"
-    ) -> None:
+    def text(self, x: float, y: float, words: str, class_: str = "", anchor: str = "start") -> None:
         self.element("text", words or " ", x=x, y=y, class_=class_, text_anchor=anchor)
 
     def line(self, start: Point, end: Point, class_: str) -> None:

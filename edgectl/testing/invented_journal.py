@@ -142,8 +142,11 @@ class InventedShift:
                 moves=moves,
                 notices=self._notices(cycle),
             ),
-            statistics=SolverStatistics("collocation", "solved", True, 9, 12.0, solve_ms - 12.0,
-                                        solve_ms) if planned else None,
+            statistics=SolverStatistics(
+                "collocation", "solved", True, 9, 12.0, solve_ms - 12.0, solve_ms
+            )
+            if planned
+            else None,
             budget_ms=2000.0,
             timings=PhaseTimings(0.4, 11.0, 0.5, solve_ms, 0.8),
             loop_lag=LoopLag(2.0 + self._random.random(), 6.0 + self._random.random()),
@@ -230,7 +233,11 @@ class InventedShift:
                 cycle % 20 == 0,
             ),
             "AI-2115": Measurement(
-                "AI-2115", self._distillate(cycle - 14), Verdict.USED, at - 420.0, 420.0,
+                "AI-2115",
+                self._distillate(cycle - 14),
+                Verdict.USED,
+                at - 420.0,
+                420.0,
                 cycle % 12 == 0,
             ),
         }
@@ -238,8 +245,15 @@ class InventedShift:
     def _estimate(self, cycle: int) -> Estimate:
         return Estimate(
             cvs=(
-                CvEstimate("BOTTOMS", self._bottoms(cycle), 0.1, 700.0,
-                           "ageing" if cycle > 400 else "live", None, 350.0),
+                CvEstimate(
+                    "BOTTOMS",
+                    self._bottoms(cycle),
+                    0.1,
+                    700.0,
+                    "ageing" if cycle > 400 else "live",
+                    None,
+                    350.0,
+                ),
                 CvEstimate("DISTILLATE", self._distillate(cycle), -0.05, 430.0, "live", None, 0.4),
             ),
             disturbances={"feed_wt_fraction_light": 0.381},
@@ -250,18 +264,31 @@ class InventedShift:
 
     def _planned(self) -> tuple[PlannedMove, ...]:
         return (
-            PlannedMove("FIC-2103", self._reflux, self._reflux - 60.0, self._reflux - 120.0,
-                        (self._reflux - 60.0,) * len(TIMES_MIN)),
+            PlannedMove(
+                "FIC-2103",
+                self._reflux,
+                self._reflux - 60.0,
+                self._reflux - 120.0,
+                (self._reflux - 60.0,) * len(TIMES_MIN),
+            ),
         )
 
     def _predictions(self, cycle: int) -> tuple[CvPrediction, ...]:
         later = [cycle + minutes * 60.0 / PERIOD_S for minutes in TIMES_MIN]
         drift = 1.0 + 0.15 * self._random.gauss(0.0, 1.0)
         return (
-            CvPrediction("BOTTOMS", tuple(drift * self._bottoms(c) for c in later),
-                         tuple(1.2 * drift * self._bottoms(c) for c in later), {}),
-            CvPrediction("DISTILLATE", tuple(self._distillate(c) for c in later),
-                         tuple(0.95 * self._distillate(c) for c in later), {}),
+            CvPrediction(
+                "BOTTOMS",
+                tuple(drift * self._bottoms(c) for c in later),
+                tuple(1.2 * drift * self._bottoms(c) for c in later),
+                {},
+            ),
+            CvPrediction(
+                "DISTILLATE",
+                tuple(self._distillate(c) for c in later),
+                tuple(0.95 * self._distillate(c) for c in later),
+                {},
+            ),
         )
 
     @staticmethod

@@ -10,7 +10,7 @@ from rich.console import Console
 
 from edgectl.console.history import SiteWords
 from edgectl.console.live import SHELL, LiveView, bar, sparkline
-from edgectl.testing.invented_journal import BEGIN, SITE, InventedShift
+from edgectl.testing.invented_journal import SITE, InventedShift
 
 
 def console(width: int, *, terminal: bool) -> Console:
@@ -21,7 +21,8 @@ def console(width: int, *, terminal: bool) -> Console:
 
 def drawn(width: int, cycle: int = 90) -> str:
     screen = console(width, terminal=True)
-    view = LiveView(screen, BEGIN, BEGIN + 3600.0)
+    view = LiveView(screen)
+    view.run(3600.0)
     shift = InventedShift()
     for number in range(cycle + 1):
         decision = shift.decision(number)
@@ -50,7 +51,7 @@ def test_the_column_stands_beside_the_words_when_there_is_room() -> None:
 
 def test_without_a_terminal_it_says_changes_only() -> None:
     screen = console(100, terminal=False)
-    view = LiveView(screen, BEGIN, None)
+    view = LiveView(screen)
     shift = InventedShift()
     with view:
         view.stage("Starting the plant.")
@@ -68,7 +69,7 @@ def test_without_a_terminal_it_says_changes_only() -> None:
 
 def test_markup_in_a_sentence_stays_words() -> None:
     screen = console(100, terminal=False)
-    LiveView(screen, BEGIN, None).event("[red]tag[/red] [bold")
+    LiveView(screen).event("[red]tag[/red] [bold")
     output = screen.file
     assert isinstance(output, io.StringIO)
     assert "[red]tag[/red] [bold" in output.getvalue()

@@ -1,0 +1,66 @@
+"""Following a journal while it is written, for the live view."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from types import TracebackType
+from typing import Self
+
+from edgectl.console.history import SiteWords
+from edgectl.console.live import LiveView
+from edgectl.console.svg import clock_words
+from edgectl.journal.reader import JournalReader, StoredEntry
+from edgectl.records.cycle_record import (
+    DecisionRecord,
+    EventRecord,
+    OpeningRecord,
+    WithdrawalRecord,
+)
+from edgectl.records.encoding import from_json
+from edgectl.records.entries import EntryKind
+
+
+class JournalFollower:
+    """Shows what was added since the last look. The file need not exist yet."""
+
+    def __init__(self, path: Path) -> None:
+        self._path = path
+        self._reader: JournalReader | None = None
+        self._next_seq = 1
+        self._site = SiteWords({})
+
+    def __enter__(self) -> Self:
+        return self
+
+    def __exit__(
+        self,
+        kind: type[BaseException] | None,
+        error: BaseException | None,
+        trace: TracebackType | None,
+    ) -> None:
+        if self._reader is not None:
+            self._reader.close()
+
+    def show_new(self, view: LiveView) -> None:
+        """Raises JournalUnreadableError, EncodingError."""
+        if self._reader is None:
+            if not self._path.exists() or self._path.stat().st_size == 0:
+                return
+            self._reader = JournalReader(self._path)
+        for entry in self._reader.entries(first_seq=self._next_seq):
+            self._next_seq = entry.seq + 1
+            self._show(entry, view)
+
+    def _show(self, entry: StoredEntry, view: LiveView) -> None:
+        if entry.kind is EntryKind.OPENED:
+            opening: OpeningRecord = from_json(OpeningRecord, entry.body)
+            self._site = SiteWords(opening.site_content)
+            view.event(f"{clock_words(entry.at)} started, {opening.restored}")
+        elif entry.kind is EntryKind.DECISION:
+            view.show(from_json(DecisionRecord, entry.body), self._site)
+        elif entry.kind is EntryKind.EVENT:
+            event: EventRecord = from_json(EventRecord, entry.body)
+            view.event(f"{clock_words(entry.at)} {event.sentence}")
+        elif entry.kind is EntryKind.WITHDRAWAL:
+            withdrawal: WithdrawalRecord = from_json(WithdrawalRecord, entry.body)
+            view.event(f"{clock_words(entry.at)} {withdrawal.sentence}")
