@@ -10,7 +10,7 @@ be only a part of the plan. A finding is a sentence; no finding means passed.
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Iterator, Mapping, Sequence
+from collections.abc import Collection, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Final
 
@@ -61,8 +61,10 @@ def vet_plan(plan: Plan, request: PlanRequest, policies: Policies) -> Vetting:
 
 def vet_targets(
     targets: Mapping[str, float],
-    positions: Mapping[str, MovePosition],
+    asks: Collection[str],
+    new: Collection[str],
     minutes_since_move: Mapping[str, float],
+    positions: Mapping[str, MovePosition],
     policies: Policies,
 ) -> tuple[str, ...]:
     """Whether the very values that will be published may be.
@@ -70,25 +72,38 @@ def vet_targets(
     Parameters
     ----------
     targets : mapping
-        Absolute targets of the MVs that a person is asked to move.
+        Absolute targets by MV, in the MV's unit.
+    asks, new : collection
+        MVs that a person is asked to move; those of them asked in this cycle.
     minutes_since_move : mapping
-        Since the last suggestion for each MV; infinite when there was none.
+        Since the last suggestion for each MV; absent when there was none.
     """
     findings: list[str] = []
     for mv, target in targets.items():
         policy, at = policies.moves[mv], positions[mv]
+        if not math.isfinite(target):
+            findings.append(f"{mv}: {target} is not a target")
+        if mv not in asks:
+            continue
         if at.position is None:
             findings.append(f"{mv}: nobody knows where it stands")
             continue
         findings += _value_findings(mv, target, at.position, at, policy)
-        rate = policy.rate_limit_per_min * minutes_since_move.get(mv, math.inf)
-        reach = min(policy.max_move, rate)
-        if abs(target - at.position) > reach + SAME * policy.scale:
+        reach = standing_reach(policy)
+        if mv in new:
+            rate = policy.rate_limit_per_min * minutes_since_move.get(mv, math.inf)
+            reach = min(policy.max_move, rate)
+        if not abs(target - at.position) <= reach + SAME * policy.scale:
             findings.append(
                 f"{mv}: {abs(target - at.position):g} {policy.unit} at once,"
                 f" {reach:g} are allowed since the last suggestion"
             )
     return tuple(findings)
+
+
+def standing_reach(policy: MovePolicy) -> float:
+    """How far a standing target may be: what was allowed when it was made, and its rounding."""
+    return policy.max_move + policy.increment
 
 
 def worsened_hard_limits(

@@ -23,7 +23,8 @@ class SuggestedMove:
     target: float | None
     """None until the first suggestion: then nothing stands at the advisory node."""
     changed: bool
-    """True in the cycle in which the suggestion changed."""
+    """True in the cycle in which a person is asked anew. A target that only follows the plant
+    (`no_change`) is no new suggestion."""
     made_at: float | None
     reason: str
     sentence: str
