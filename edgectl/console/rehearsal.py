@@ -81,8 +81,8 @@ async def rehearse(site: Site, password: str | None, journal: Path, stop: asynci
         solver = WatchedSolver(setup)
         solver.start()
         try:
-            await solver.wait_ready(BUILD_LIMIT_S)
-            await solver.wait_standby(BUILD_LIMIT_S)
+            # The standby too: nothing is built beside the first cycles.
+            await solver.wait_ready(BUILD_LIMIT_S, workers=2)
             solves = await measured_solves_ms(
                 solver, site, policies_from(site), int(first.get("measure", 0))
             )

@@ -12,8 +12,9 @@ class Brain(Protocol):
     """Built once from a site, then asked again and again; keeps nothing but compiled code.
 
     The setup names its maker as `module:function`; the function takes the site
-    as a dict and returns one of these. What it raises ends the process: a
-    request that cannot be planned is answered with NoPlan, not with an error.
+    as a dict and a stopwatch (wall seconds, monotonic), and returns one of these.
+    What it raises ends the process: a request that cannot be planned is answered
+    with NoPlan, not with an error.
     """
 
     @property

@@ -13,7 +13,7 @@ from __future__ import annotations
 import argparse
 import asyncio
 import os
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -59,7 +59,7 @@ class BenchBrain:
         raise ValueError(f"no job called {name}")
 
 
-def build_brain(site: dict[str, Any]) -> BenchBrain:
+def build_brain(site: dict[str, Any], wall: Callable[[], float]) -> BenchBrain:
     burn(site["build_s"])
     return BenchBrain()
 

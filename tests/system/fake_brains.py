@@ -14,6 +14,7 @@ import signal
 import stat
 import struct
 import sys
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 from typing import Any, NoReturn
 
@@ -23,7 +24,7 @@ from edgectl.records.plan import Estimate, NoPlan, Plan, PlannedMove, PlanReques
 STATISTICS = SolverStatistics("fake", "solved", True, 1, 0.1, 0.2, 0.3)
 
 
-def build_brain(site: dict[str, Any]) -> FakeBrain:
+def build_brain(site: dict[str, Any], wall: Callable[[], float]) -> FakeBrain:
     misbehave(site.get("build", "well"))
     return FakeBrain(site)
 
