@@ -49,10 +49,13 @@ def value_words(site: SiteWords, name: str, value: float | None) -> str:
 
 
 def suggestion_words(site: SiteWords, move: SuggestedMove, position: float | None) -> str:
-    """`FIC-2103 reflux flow: 7,900 kg/h, now 8,000 kg/h`."""
+    """`FIC-2103 reflux flow: 7,900 kg/h, now at 8,000 kg/h`."""
+    name = f"{move.mv} {site.description(move.mv)}"
     target = value_words(site, move.mv, move.target)
-    there = "" if position is None else f", now at {value_words(site, move.mv, position)}"
-    return f"{move.mv} {site.description(move.mv)}: {target}{there}"
+    there = value_words(site, move.mv, position)
+    if position is None:
+        return f"{name}: {target}"
+    return f"{name}: stays at {there}" if there == target else f"{name}: {target}, now at {there}"
 
 
 def holds_answer(history: History) -> str:
