@@ -165,3 +165,14 @@ class OpeningRecord:
     """The site file as loaded (`Site.as_dict`): units, limits and tags for whoever reads the
     journal later, without the file. A site file never holds a password."""
     schema: int = 1
+
+
+@dataclass(frozen=True, slots=True)
+class ClosingRecord:
+    """The runtime ended, and said so. After a crash there is none."""
+
+    reason: str
+    """`stopping`, `finished` or `fault`."""
+    sentence: str
+    cycles: int
+    """Run since the opening."""
