@@ -20,6 +20,7 @@ from edgectl.console.endings import (
 )
 from edgectl.console.figures import summary
 from edgectl.console.history import read_history
+from edgectl.console.logs import log_to_stderr
 from edgectl.console.rehearsal import OrderError, rehearse
 from edgectl.journal.database import JournalUnusableError
 from edgectl.journal.lock import JournalLockedError
@@ -44,6 +45,7 @@ def run_command(
     except PasswordError as error:
         raise SiteFileWrongError(str(error)) from error
     journal = folder / JOURNAL_FILE
+    log_to_stderr()
     for caution in CAUTIONS:
         sys.stderr.write(f"{caution}\n")
     try:
