@@ -16,13 +16,14 @@ import asyncio
 import io
 import json
 import logging
+import tempfile
 import time
 import tomllib
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from datetime import UTC, datetime
 from pathlib import Path
-from typing import Any
+from typing import Any, TextIO, cast
 
 import structlog
 
@@ -140,9 +141,9 @@ async def run(seed: int, hours: float, crew: str, changes: Sequence[str], verbos
     content = changed(tomllib.loads(EXAMPLE.read_text()), changes)
     site = Site.from_dict(content, "bench")
     brain = build_brain(site.as_dict(), time.monotonic)
-    clock, truth = PatientClock(), Path(f"/tmp/edgectl-closed-loop-{seed}-{time.monotonic_ns()}.csv")
+    clock = PatientClock()
     plant = SimulatedPlant(seed)
-    with truth.open("w", encoding="utf-8") as file:
+    with tempfile.NamedTemporaryFile("w+", encoding="utf-8", suffix=".csv") as file:
         simulation = Simulation(
             plant,
             Crew(CrewMode(crew), seed),
@@ -150,7 +151,7 @@ async def run(seed: int, hours: float, crew: str, changes: Sequence[str], verbos
             AdviceWatchdog(site.cycle.period_s, 3.0),
             clock.plant_time,
             WriteLog(io.StringIO(), lambda: (clock.now, 0.0)),
-            TruthFile(file, plant.true_values().keys()),
+            TruthFile(cast("TextIO", file), plant.true_values().keys()),
         )
         rig = Rig(site, brain, clock, simulation)
         ports = Ports(rig, rig, rig, rig, clock)
@@ -171,8 +172,8 @@ async def run(seed: int, hours: float, crew: str, changes: Sequence[str], verbos
             asks += any(move.changed for move in report.advice.moves)
             if verbose:
                 narrate(cycle, report, plant)
-    scored = score(read_truth(truth))
-    truth.unlink()
+        file.flush()
+        scored = score(read_truth(Path(file.name)))
     ranked = sorted(rig.solve_ms)
     quality = "  ".join(
         f"{q.name} {100 * q.in_spec_fraction:.1f} % mean {q.mean:.3g}" for q in scored.qualities
@@ -214,9 +215,7 @@ def main() -> None:
         wrapper_class=structlog.make_filtering_bound_logger(logging.WARNING),
     )
     for seed in range(options.first, options.first + options.seeds):
-        line = asyncio.run(
-            run(seed, options.hours, options.crew, options.changes, options.verbose)
-        )
+        line = asyncio.run(run(seed, options.hours, options.crew, options.changes, options.verbose))
         print(line, flush=True)
 
 
