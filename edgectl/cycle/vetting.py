@@ -210,7 +210,7 @@ def _move_findings(move: PlannedMove, at: MovePosition, policy: MovePolicy) -> I
     if at.position is None or abs(move.position - at.position) > SAME * policy.scale:
         yield f"{move.mv}: planned from {move.position:g}, the plant stands at {at.position}"
         return
-    if move.first == move.position:
+    if abs(move.first - move.position) <= SAME * policy.scale:
         return
     yield from _value_findings(move.mv, move.first, at.position, at, policy)
     if abs(move.first - at.position) > policy.max_move + SAME * policy.scale:
