@@ -78,6 +78,7 @@ async def demo_result(site: Site, folder: Path, story: Story, pace: Pace) -> Dem
     chain = verify(journal)
     write_report(history, chain, journal, report)
     writes = count_writes_in(folder / "writes.jsonl", site.write_fence())
+    plant_s = len(history.decisions) * pace.period_s
     score = await _score(folder / "truth.csv")
     content: dict[str, Any] = {
         "schema": SCHEMA,
@@ -85,7 +86,7 @@ async def demo_result(site: Site, folder: Path, story: Story, pace: Pace) -> Dem
         "seed": story.seed,
         "drill": story.drill,
         "speed": pace.speed,
-        "plant_minutes": pace.plant_s / 60.0,
+        "plant_minutes": plant_s / 60.0,
         **summary(history),
         "writes": writes.accepted,
         "writes_outside_fence": writes.outside_fence,
@@ -100,7 +101,7 @@ async def demo_result(site: Site, folder: Path, story: Story, pace: Pace) -> Dem
     }
     sentences = (
         "",
-        f"{counted(content['cycles'], 'cycle')} in {duration_words(pace.plant_s)} of plant time.",
+        f"{counted(content['cycles'], 'cycle')} in {duration_words(plant_s)} of plant time.",
         budget_answer(history),
         holds_answer(history),
         tags_answer(history),

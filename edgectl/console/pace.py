@@ -25,8 +25,6 @@ BUDGET_SHARE: Final = 0.8
 """Of the wall period: what the loop enforces at most."""
 FASTEST: Final = 60.0
 """The plant and the rest of a cycle need their time too: half a second of wall per 30 s."""
-RUN_WALL_S: Final = 80.0
-"""A demo that was not told how long simulates no more than fits into so much wall time."""
 USUAL_HOURS: Final = 1.0
 STEPS: Final = (1.0, 1.0, 1.01, 1.03, 1.0, 0.98)
 """Feed relative to the operating point, cycle by cycle: what the solver meets is not at rest."""
@@ -42,18 +40,21 @@ class Pace:
 
     speed: float
     cycles: int
-    remark: str
+    period_s: float
+    remark: str = ""
     """Why it is not what was usual; empty when it is."""
 
     @property
     def plant_s(self) -> float:
         return self.cycles * self.period_s
 
-    period_s: float = 30.0
-
 
 def pace_for(
-    slowest_ms: float | None, period_s: float, hours: float | None, speed: float | None
+    slowest_ms: float | None,
+    period_s: float,
+    wall_s: float,
+    hours: float | None = None,
+    speed: float | None = None,
 ) -> Pace:
     """The largest speed that leaves a twofold margin on the slowest measured solve.
 
@@ -63,6 +64,8 @@ def pace_for(
         Slowest measured solve [ms]; None when `speed` is given.
     period_s : float
         Plant seconds from one cycle to the next [s].
+    wall_s : float
+        Wall time that is left for the cycles, unless the person says how many hours [s].
     hours, speed : float or None
         What the person asked for; None leaves it to us [h], [-].
     """
@@ -72,16 +75,18 @@ def pace_for(
         safe = BUDGET_SHARE * period_s / (MARGIN * slowest_ms / 1e3)
         # Whole numbers read better, and rounding down keeps the margin.
         chosen = min(FASTEST, float(math.floor(safe)) if safe > 1.0 else safe)
-    wanted_h = USUAL_HOURS if hours is None else hours
-    fits_h = RUN_WALL_S * chosen / 3600.0
-    remark = ""
-    if hours is None and fits_h < wanted_h:
-        wanted_h = fits_h
-        remark = (
-            f"This machine's safe speed is {chosen:g}: {60 * fits_h:.0f} simulated minutes"
-            " instead of 60, so that the demo ends in time. --hours 1 runs the whole hour."
-        )
-    return Pace(chosen, max(1, round(wanted_h * 3600.0 / period_s)), remark, period_s)
+    usual = round(USUAL_HOURS * 3600.0 / period_s)
+    wanted = usual if hours is None else round(hours * 3600.0 / period_s)
+    fitting = int(wall_s * chosen / period_s)
+    if hours is not None or fitting >= wanted:
+        return Pace(chosen, max(1, wanted), period_s)
+    cycles = max(1, fitting)
+    remark = (
+        f"Faster would be too close to this machine's slowest solve, and at this speed"
+        f" {cycles * period_s / 60.0:.0f} of the usual {60.0 * USUAL_HOURS:.0f} minutes fit into"
+        f" two minutes. --hours {USUAL_HOURS:g} runs the whole hour."
+    )
+    return Pace(chosen, cycles, period_s, remark)
 
 
 async def measured_solves_ms(

@@ -81,7 +81,7 @@ def time_ticks(low: float, high: float, most: int = 9) -> list[float]:
 
 def clock_words(instant: float, with_date: bool = False) -> str:
     """An instant as people say it, UTC."""
-    pattern = "%d %B %Y, %H:%M" if with_date else "%H:%M"
+    pattern = "%-d %B %Y, %H:%M" if with_date else "%H:%M"
     return datetime.fromtimestamp(instant, UTC).strftime(pattern)
 
 
