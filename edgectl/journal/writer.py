@@ -15,6 +15,7 @@ from __future__ import annotations
 
 import asyncio
 import threading
+from collections.abc import Callable
 from contextlib import suppress
 from pathlib import Path
 from queue import SimpleQueue
@@ -185,10 +186,10 @@ class SqliteJournal:
         self._ended.set()
 
 
-def _tell(loop: asyncio.AbstractEventLoop, what: object, *arguments: object) -> None:
+def _tell(loop: asyncio.AbstractEventLoop, what: Callable[..., None], *arguments: object) -> None:
     # A closed loop has nobody left to tell; what was written stays written.
     with suppress(RuntimeError):
-        loop.call_soon_threadsafe(what, *arguments)  # type: ignore[arg-type]
+        loop.call_soon_threadsafe(what, *arguments)
 
 
 def _succeed(answer: asyncio.Future[T], result: T) -> None:

@@ -20,6 +20,10 @@ from edgectl.worker.frames import Frame, FrameDecoder, FrameError, FrameKind, en
 
 CHILD = "edgectl.worker.child"
 
+# A plan has about ten kilobytes. Parsing is done in the event loop, and 8 MiB would hold it up
+# for more than a tenth of a second: so an answer may be large, but not that large.
+ANSWER_LIMIT_BYTES = 2**20
+
 # What is kept of the worker's standard error: enough for the last line of a traceback.
 TAIL_BYTES = 4096
 
@@ -50,7 +54,7 @@ class WorkerProcess(asyncio.SubprocessProtocol):
         self.lost: str | None = None
         self._on_lost = on_lost
         self._silenced = False
-        self._decoder = FrameDecoder()
+        self._decoder = FrameDecoder(ANSWER_LIMIT_BYTES)
         self._answer: asyncio.Future[Frame] | None = None
         self._tail = b""
         self._linger: asyncio.TimerHandle | None = None

@@ -48,6 +48,7 @@ class FakeBrain:
             "wrong_id_no_plan": NoPlan("another", "infeasible", "No way.", STATISTICS, None),
             "wrong_cycle": replace(plan, cycle=request.cycle - 1),
             "nan": replace(plan, cost_with=math.nan, cost_without=-math.inf),
+            "large": replace(plan, gives_way=("x" * 1_100_000,)),
             "huge": replace(plan, gives_way=("x" * 9_000_000,)),
             "no_answer": STATISTICS,
         }

@@ -10,7 +10,7 @@ from collections.abc import Callable
 from pathlib import Path
 
 import pytest
-from hypothesis import HealthCheck, given, settings
+from hypothesis import HealthCheck, example, given, settings
 from hypothesis import strategies as st
 
 from edgectl.journal.chain import META, ChainEnd, genesis, hash_of
@@ -88,6 +88,7 @@ finite = st.floats(allow_nan=False, allow_infinity=False)
     cycle=st.none() | st.integers(-(2**63), 2**63 - 1),
     body=st.dictionaries(st.text(), st.text() | finite, max_size=3),
 )
+@example(at=-0.0, cycle=-(2**63), body={"zero": -0.0})
 def test_whatever_is_stored_verifies(
     tmp_path: Path, at: float, cycle: int | None, body: dict[str, str | float]
 ) -> None:
