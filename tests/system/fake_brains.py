@@ -18,8 +18,11 @@ from collections.abc import Callable
 from dataclasses import dataclass, replace
 from typing import Any, NoReturn
 
+from edgectl.records.encoding import to_json
 from edgectl.records.entries import Json
 from edgectl.records.plan import Estimate, NoPlan, Plan, PlannedMove, PlanRequest, SolverStatistics
+from edgectl.worker.frames import Frame, FrameKind, encode_frame
+from edgectl.worker.messages import Ready
 
 STATISTICS = SolverStatistics("fake", "solved", True, 1, 0.1, 0.2, 0.3)
 
@@ -115,6 +118,10 @@ def misbehave(how: str) -> None:
         os.write(
             the_wire(), struct.pack(">Ic", 2, b"n") + b"{}" + struct.pack(">Ic", 2, b"n") + b"{}"
         )
+    if how == "ready_twice":
+        ready = encode_frame(Frame(FrameKind.READY, to_json(Ready("fake", "f00d", 1.0, 1.0))))
+        os.write(the_wire(), ready + ready)
+        hang()
     if how == "hang_up":
         os.close(the_wire())
         hang()

@@ -296,6 +296,12 @@ async def test_a_build_that_takes_too_long_is_a_death() -> None:
             await solver.wait_ready(START_S)
 
 
+async def test_a_worker_lost_in_the_moment_it_was_ready_is_never_asked() -> None:
+    async with solver_with(Patience(deaths=2, pause_s=0.01), build="ready_twice") as solver:
+        with pytest.raises(WorkerUnavailableError, match="a READY frame that nobody asked for"):
+            await solver.wait_ready(START_S)
+
+
 @pytest.mark.parametrize(
     ("brain", "why"),
     [
