@@ -78,6 +78,14 @@ class Played:
     reports: list[CycleReport] = field(default_factory=list)
     starts: list[int] = field(default_factory=list)
     """First cycle of each start of the runtime."""
+    begun_with: list[int] = field(default_factory=list)
+    """Length of `reports` at each start. Cycles that never got on record may be run again."""
+
+    @property
+    def runs(self) -> list[list[CycleReport]]:
+        """The reports of each start."""
+        ends = [*self.begun_with[1:], len(self.reports)]
+        return [self.reports[a:b] for a, b in zip(self.begun_with, ends, strict=True)]
 
     @property
     def decisions(self) -> list[DecisionRecord]:
@@ -172,6 +180,7 @@ def _runtime(
     body, seq = (newest[0].entry.body, newest[0].seq) if newest else (None, None)
     begin = restored(body, seq, WHO.model_hash, clock.plant_time(), policies)
     played.starts.append(begin.first_cycle)
+    played.begun_with.append(len(played.reports))
     opening = OpeningRecord(
         WHO, "toy", "toy", begin.from_seq, begin.words, clock.speed,
         policies.cycle.period_s, policies.cycle.budget_s,
