@@ -68,7 +68,7 @@ class DemoResult:
 
     def print_to(self, console: Console) -> None:
         for sentence in self.sentences:
-            console.print(Text(sentence))
+            console.print(Text(sentence), soft_wrap=True)
 
 
 async def demo_result(site: Site, folder: Path, story: Story, pace: Pace) -> DemoResult:

@@ -78,7 +78,7 @@ class LiveView:
         if self._console.is_terminal:
             self._live.update(Text(words, style="bold"), refresh=True)
         else:
-            self._console.print(Text(words))
+            self._console.print(Text(words), soft_wrap=True)
 
     def run(self, plant_s: float) -> None:
         """From the first decision on, the run lasts so long [plant s]."""
@@ -87,7 +87,7 @@ class LiveView:
     def event(self, words: str) -> None:
         self._events.append(words)
         if not self._console.is_terminal:
-            self._console.print(Text(f"  {words}"))
+            self._console.print(Text(f"  {words}"), soft_wrap=True)
 
     def show(self, decision: DecisionRecord, site: SiteWords) -> None:
         if decision.estimate is not None and decision.estimate.profile:

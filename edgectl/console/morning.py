@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from edgectl.console.charts import OUTCOME_WORDS
 from edgectl.console.figures import (
     MadeMove,
@@ -60,8 +62,9 @@ def suggestion_words(site: SiteWords, move: SuggestedMove, position: float | Non
 
 def holds_answer(history: History) -> str:
     """Did it hold, how long, and why?"""
-    held = [s for s in spells(history.decisions) if s.standing is Standing.HOLDING]
-    silent = [s for s in spells(history.decisions) if s.standing is Standing.SILENT]
+    stretches = standing_stretches(history)
+    held = [s for s in stretches if s.standing is Standing.HOLDING]
+    silent = [s for s in stretches if s.standing is Standing.SILENT]
     if not held and not silent:
         return "No hold: every cycle after the start ended in advice."
     said = []
@@ -76,6 +79,17 @@ def holds_answer(history: History) -> str:
     return " ".join(said)
 
 
+def standing_stretches(history: History) -> list[Spell]:
+    """Spells of one standing whatever the reason; the reason is the first one's."""
+    found: list[Spell] = []
+    for spell in spells(history.decisions):
+        if found and found[-1].standing is spell.standing:
+            found[-1] = replace(found[-1], end=spell.end, cycles=found[-1].cycles + spell.cycles)
+        else:
+            found.append(spell)
+    return found
+
+
 def _length(spell: Spell) -> float:
     return spell.end - spell.begin
 
@@ -85,7 +99,7 @@ def budget_answer(history: History) -> str:
     late = overruns(history.decisions)
     skipped = sum(decision.skipped_cycles for decision in history.decisions)
     said = (
-        f"{counted(len(late), 'cycle')} ran over the budget; what was held is listed below."
+        f"{counted(len(late), 'cycle')} ran over the budget."
         if late
         else "No cycle ran over its budget."
     )
