@@ -73,8 +73,12 @@ def percentile(values: Iterable[float], share: float) -> float | None:
 
 def solve_times_ms(decisions: Iterable[DecisionRecord]) -> list[float]:
     """Wall time of each solve that was asked for, overruns included [ms]."""
-    unasked = ("bad_inputs", "no_data", "not_asked", "solver_warming")
-    return [d.timings.solve_ms for d in decisions if d.outcome not in unasked]
+    return [d.timings.solve_ms for d in decisions if was_asked(d)]
+
+
+def was_asked(decision: DecisionRecord) -> bool:
+    """Whether a worker was asked in this cycle."""
+    return decision.outcome not in ("bad_inputs", "no_data", "not_asked", "solver_warming")
 
 
 def overheads_ms(history: History) -> list[float]:

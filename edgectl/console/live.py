@@ -17,6 +17,7 @@ from rich.live import Live
 from rich.table import Table
 from rich.text import Text
 
+from edgectl.console.figures import was_asked
 from edgectl.console.history import SiteWords
 from edgectl.console.morning import duration_words, suggestion_words
 from edgectl.console.svg import clock_words, number_words
@@ -93,7 +94,7 @@ class LiveView:
         if decision.estimate is not None and decision.estimate.profile:
             self._profile = decision.estimate.profile
         self._begin = decision.made_at if self._begin is None else self._begin
-        if decision.timings.solve_ms > 0.0:
+        if was_asked(decision):
             self._solves.append(decision.timings.solve_ms)
         if self._console.is_terminal:
             self._live.update(self.picture(decision, site), refresh=True)
@@ -108,8 +109,7 @@ class LiveView:
             return
         self._said, self._quiet_cycles = now, 0
         line = Text(f"{clock_words(decision.made_at)}  {advice.standing.value:<9} ")
-        line.append(f"{number_words(decision.timings.solve_ms)} of")
-        line.append(f" {number_words(decision.budget_ms)} ms  {advice.sentence}")
+        line.append(f"{_solve_words(decision)}  {advice.sentence}")
         self._console.print(line, soft_wrap=True)
         for words in _targets(decision, site):
             self._console.print(Text(f"       {words}"), soft_wrap=True)
@@ -148,10 +148,11 @@ class LiveView:
             yield Text(words, style="dim", overflow="ellipsis", no_wrap=True)
 
     def _solve_line(self, decision: DecisionRecord) -> Text:
-        spent, budget = decision.timings.solve_ms, decision.budget_ms
+        spent = decision.timings.solve_ms if was_asked(decision) else 0.0
+        budget = decision.budget_ms
         line = Text("solve  ")
         line.append(bar(spent / budget if budget > 0 else 0.0, 20), style="cyan")
-        line.append(f" {number_words(spent)} of {number_words(budget)} ms")
+        line.append(f" {_solve_words(decision)}")
         if len(self._solves) > 1:
             line.append("\nbefore ", style="dim")
             line.append(sparkline(self._solves, budget), style="cyan")
@@ -167,6 +168,13 @@ class LiveView:
         line.append(bar(done / total, 20))
         line.append(f" {duration_words(done)} of {duration_words(total)}")
         yield line
+
+
+def _solve_words(decision: DecisionRecord) -> str:
+    budget = number_words(decision.budget_ms)
+    if not was_asked(decision):
+        return f"no solve, {budget} ms allowed"
+    return f"{number_words(decision.timings.solve_ms)} of {budget} ms"
 
 
 def _standing_line(advice: Advice) -> Text:
