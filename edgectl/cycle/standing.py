@@ -16,6 +16,7 @@ The diagram in DEVELOPERS.md is made from this table.
 
 from __future__ import annotations
 
+import sys
 from dataclasses import dataclass
 from enum import StrEnum
 from typing import Final
@@ -133,3 +134,7 @@ _MEANING: Final = {
     " or the runtime ends.",
     Event.BEGUN_ANEW: "the estimator's memory was lost or too old: warm up again.",
 }
+
+
+if __name__ == "__main__":
+    sys.stdout.write(as_markdown())

@@ -158,6 +158,8 @@ class MemoryJournal:
     clock: Clock
     script: Script
     rows: list[Row] = field(default_factory=list)
+    durable_cycles: set[int] = field(default_factory=set)
+    """Cycles whose decision is on record."""
     cycle: int = 0
     """Of the newest decision asked for: the script speaks of cycles."""
 
@@ -182,6 +184,8 @@ class MemoryJournal:
     def _keep(self, entry: Entry) -> Row:
         row = Row(len(self.rows) + 1, entry, self.clock.wall())
         self.rows.append(row)
+        if entry.kind is EntryKind.DECISION and entry.cycle is not None:
+            self.durable_cycles.add(entry.cycle)
         return row
 
     def bodies(self, kind: EntryKind) -> list[dict[str, Any]]:
@@ -250,9 +254,9 @@ class MemorySink:
         numbers = [advice.valid_until, *(m.target for m in advice.moves)]
         assert all(n is None or math.isfinite(n) for n in numbers), f"not finite: {advice}"
         if advice.valid:
-            durable = {r.entry.cycle for r in self.journal.rows
-                       if r.entry.kind is EntryKind.DECISION}  # fmt: skip
-            assert advice.cycle in durable, "valid advice is published after its record is durable"
+            assert advice.cycle in self.journal.durable_cycles, (
+                "valid advice is published after its record is durable"
+            )
 
     def _write_values(self, advice: Advice) -> None:
         for move in advice.moves:
