@@ -170,5 +170,3 @@ class Planning(Section):
     """When moves may be made, minutes from now, at ends of intervals."""
     max_iterations: Count
     """Most iterations of one solve."""
-    radau_points: Annotated[int, Field(ge=1, le=5)]
-    """Radau collocation points per interval."""

@@ -57,7 +57,7 @@ def site_file_reference() -> str:
     lines += _roles()
     lines += ["## Units", "", ", ".join(f"`{name}`" for name in UNITS) + ".", ""]
     lines += ["## Rules between keys", ""]
-    lines += [f"- {' '.join(inspect.getdoc(rule).split())}" for rule in RULES]  # type: ignore[union-attr]
+    lines += [f"- {' '.join((inspect.getdoc(rule) or '').split())}" for rule in RULES]
     return "\n".join(lines) + "\n"
 
 

@@ -51,8 +51,10 @@ def test_a_site_cannot_be_changed(whole: str) -> None:
     site = parse_site(whole, "site.toml")
     assert site.advisory is not None
     with pytest.raises(ValueError, match="frozen"):
+        # What the types forbid is refused at run time too.
         site.cycle.period_s = 1.0  # type: ignore[misc]
     with pytest.raises(TypeError):
+        # As above.
         site.advisory.moves["X"] = site.advisory.moves["FIC-2103"]  # type: ignore[index]
 
 
