@@ -130,7 +130,8 @@ def solve_tail(times_ms: Sequence[float], budget_ms: float) -> str:
             x, y = across(slow), up(max(1.0 - share, lowest))
             drawing.dot(x, y, 3.5, "reading")
             words = f"{100 * share:g} % took at most {number_words(slow)} ms"
-            drawing.text(x + 8, y - 5, words, "small")
+            anchor = "start" if x < 0.5 * (left + right) else "end"
+            drawing.text(x + (8 if anchor == "start" else -8), y - 5, words, "small", anchor)
     _budget_mark(drawing, across(budget_ms), top, bottom)
     _wall_axis(drawing, across, bottom, left, right)
     return str(drawing)

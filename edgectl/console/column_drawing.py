@@ -13,9 +13,10 @@ LEFT, RIGHT, TOP, BOTTOM = 146.0, 338.0, 62.0, 492.0
 """Inside of the shell; what lies outside is for words."""
 
 
-def column_drawing(record: DecisionRecord, site: SiteWords) -> str:
-    """The estimated profile with the measured temperatures; empty without an estimate."""
-    profile = record.estimate.profile if record.estimate else ()
+def column_drawing(
+    record: DecisionRecord, profile: tuple[ProfileStage, ...], site: SiteWords
+) -> str:
+    """The profile with the readings and positions of `record`; empty without a profile."""
     if len(profile) < 2:
         return ""
     drawing = Drawing(WIDTH, HEIGHT, "The column now: temperature and composition by stage")

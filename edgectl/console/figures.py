@@ -112,6 +112,22 @@ def spells(decisions: Sequence[DecisionRecord]) -> list[Spell]:
     return found
 
 
+def stretches(found: Sequence[Spell]) -> list[Spell]:
+    """Spells in a row with one standing as one, all their reasons named, the first one's words."""
+    merged: list[Spell] = []
+    for spell in found:
+        last = merged[-1] if merged else None
+        if last is None or last.standing is not spell.standing:
+            merged.append(spell)
+            continue
+        reasons = last.reason.split(", ")
+        named = reasons if spell.reason in reasons else [*reasons, spell.reason]
+        merged[-1] = replace(
+            last, end=spell.end, cycles=last.cycles + spell.cycles, reason=", ".join(named)
+        )
+    return merged
+
+
 def overruns(decisions: Iterable[DecisionRecord]) -> list[HeldCycle]:
     return [
         HeldCycle(d, tuple((move.mv, move.target) for move in d.advice.moves))

@@ -47,6 +47,8 @@ class History:
     events: list[Dated] = field(default_factory=list)
     withdrawals: list[Dated] = field(default_factory=list)
     openings: list[Dated] = field(default_factory=list)
+    newest_estimate: DecisionRecord | None = None
+    """The newest decision that has one, whole: a held cycle has none of its own."""
 
     @property
     def latest(self) -> DecisionRecord | None:
@@ -145,6 +147,8 @@ def history_from(entries: Iterable[StoredEntry]) -> History:
                 history.decisions[-1] = _slim(newest, keep_predictions=keep)
             newest = from_json(DecisionRecord, entry.body)
             history.decisions.append(newest)
+            if newest.estimate is not None and newest.estimate.profile:
+                history.newest_estimate = newest
             history.decision_seqs.append(entry.seq)
         elif entry.kind is EntryKind.DELIVERY:
             delivery: DeliveryRecord = from_json(DeliveryRecord, entry.body)

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
-
 from edgectl.console.charts import OUTCOME_WORDS
 from edgectl.console.figures import (
     MadeMove,
@@ -12,6 +10,7 @@ from edgectl.console.figures import (
     overruns,
     refused_plans,
     spells,
+    stretches,
     unused_tags,
     uptake,
 )
@@ -62,9 +61,9 @@ def suggestion_words(site: SiteWords, move: SuggestedMove, position: float | Non
 
 def holds_answer(history: History) -> str:
     """Did it hold, how long, and why?"""
-    stretches = standing_stretches(history)
-    held = [s for s in stretches if s.standing is Standing.HOLDING]
-    silent = [s for s in stretches if s.standing is Standing.SILENT]
+    found = stretches(spells(history.decisions))
+    held = [s for s in found if s.standing is Standing.HOLDING]
+    silent = [s for s in found if s.standing is Standing.SILENT]
     if not held and not silent:
         return "No hold: every cycle after the start ended in advice."
     said = []
@@ -77,17 +76,6 @@ def holds_answer(history: History) -> str:
                 f" ({longest.reason})."
             )
     return " ".join(said)
-
-
-def standing_stretches(history: History) -> list[Spell]:
-    """Spells of one standing whatever the reason; the reason is the first one's."""
-    found: list[Spell] = []
-    for spell in spells(history.decisions):
-        if found and found[-1].standing is spell.standing:
-            found[-1] = replace(found[-1], end=spell.end, cycles=found[-1].cycles + spell.cycles)
-        else:
-            found.append(spell)
-    return found
 
 
 def _length(spell: Spell) -> float:

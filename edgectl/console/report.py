@@ -23,6 +23,7 @@ from edgectl.console.figures import (
     solve_times_ms,
     spells,
     standing_counts,
+    stretches,
 )
 from edgectl.console.history import History
 from edgectl.console.svg import clock_words, escaped, number_words
@@ -124,11 +125,11 @@ def _opening(history: History, latest: DecisionRecord) -> str:
         Standing.SILENT: "Silent: nothing is suggested",
         Standing.STARTING: "Starting: no advice yet",
     }[advice.standing]
-    since = next(reversed(spells(history.decisions))).begin
+    since = stretches(spells(history.decisions))[-1].begin
     stood = f"{stands}, since {clock_words(since)}. Reason: {advice.reason}."
     targets = []
     for move in advice.moves:
-        if move.target is None or advice.standing is Standing.SILENT:
+        if move.target is None or advice.standing not in (Standing.ADVISING, Standing.HOLDING):
             continue
         position = latest.positions.get(move.mv)
         words = morning.suggestion_words(site, move, position.position if position else None)
@@ -156,15 +157,19 @@ def _opening(history: History, latest: DecisionRecord) -> str:
 
 
 def _column(history: History, latest: DecisionRecord) -> str:
-    # A held cycle has no estimate of its own; only the newest decision keeps its profile.
-    drawing = column_drawing(latest, history.site)
-    if not drawing:
-        return _p("The newest cycle has no estimate, so there is no profile to draw.", "quiet")
-    return drawing + _key(
+    estimated = history.newest_estimate
+    profile = estimated.estimate.profile if estimated and estimated.estimate else ()
+    drawing = column_drawing(latest, profile, history.site)
+    if not drawing or estimated is None:
+        return _p("No cycle of this stretch has an estimate, so there is no profile.", "quiet")
+    key = _key(
         ("curve", "temperature, estimated"),
         ("reading", "temperature, measured"),
         ("bar light", "light component in the liquid, mole share of the shelf"),
     )
+    old = estimated.made_at < latest.made_at
+    when = f"The profile is the newest estimate, of {clock_words(estimated.made_at)}."
+    return drawing + key + (_p(when, "notice") if old else "")
 
 
 def _solves(history: History) -> str:
@@ -233,11 +238,11 @@ def _standings(history: History) -> str:
             spell.reason,
             spell.sentence,
         )
-        for spell in found
+        for spell in stretches(found)
         if spell.standing is not Standing.ADVISING
     ]
     listed = (
-        _table(("from", "for", "standing", "reason", "what was said"), rows)
+        _table(("from", "for", "standing", "reasons", "what was said first"), rows)
         if rows
         else _p("It advised throughout.")
     )
