@@ -17,6 +17,7 @@ from edgectl.console.figures import (
     solve_times_ms,
     spells,
     standing_counts,
+    stretches,
     summary,
     unused_tags,
     uptake,
@@ -107,3 +108,13 @@ def test_overheads_and_sizes_come_from_the_deliveries(shift: History) -> None:
     found = summary(shift)
     assert found["cycle_overhead_ms"] == {"p50": 29.3, "p95": 29.3}
     assert found["record_bytes"] == 21000
+
+
+def test_a_stretch_joins_spells_of_one_standing_and_names_all_reasons(shift: History) -> None:
+    found = spells(shift.decisions)
+    other = replace(found[4], reason="over_budget", begin=found[4].end, end=found[4].end + 60.0)
+    joined = stretches([*found[3:5], other, replace(other, end=other.end + 30.0), *found[5:]])
+    assert [s.standing.value for s in joined] == ["advising", "holding", "silent", "advising"]
+    assert joined[1].reason == "input_bad, over_budget"
+    assert (joined[1].begin, joined[1].end) == (found[4].begin, other.end + 30.0)
+    assert joined[1].cycles == 30

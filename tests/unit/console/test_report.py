@@ -172,3 +172,15 @@ def test_a_file_that_is_no_journal_is_a_finding(tmp_path: Path) -> None:
     assert result.exit_code == 1
     assert "The chain is broken" in result.output
     assert result.exception is None or isinstance(result.exception, SystemExit)
+
+
+def test_a_held_cycle_shows_the_newest_profile_and_says_how_old(shift_journal: Path) -> None:
+    history = read_history(shift_journal, BEGIN, BEGIN + 30.0 * 252)
+    latest = history.latest
+    assert latest is not None
+    assert latest.estimate is None
+    page = report_page(history, CHAIN, "shift.journal")
+    assert drawing_with(page, 'aria-label="The column now').count('class="shelf"') == 38
+    assert "The profile is the newest estimate, of 07:59." in page
+    assert "Advice withdrawn: TI-2107 has been bad for 5 min." in page
+    assert "<b>FIC-2103" not in page, "nothing is suggested while it is silent"
