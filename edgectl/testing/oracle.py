@@ -167,7 +167,9 @@ def _recovers(played: Played) -> Iterator[str]:
     last = played.reports[-1]
     if last.record.cycle < played.script.over_at + QUIET_CYCLES:
         return
-    if last.advice.standing is not Standing.ADVISING:
+    # Where the crew has taken the plant is the crew's affair.
+    taken_away = played.crew.mode == "opposes" and last.advice.reason == "outside_limits"
+    if last.advice.standing is not Standing.ADVISING and not taken_away:
         advice = last.advice
         yield f"I6 cycle {last.record.cycle}: still {advice.standing}: {advice.sentence}"
 

@@ -11,10 +11,10 @@ import math
 import random
 from collections import deque
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Final
 
-from edgectl.cycle.policies import MovePolicy, Policies
+from edgectl.cycle.policies import AdvicePolicy, MovePolicy, Policies
 from edgectl.records.measurements import MovePosition, Service
 from edgectl.records.plan import (
     CvEstimate,
@@ -48,6 +48,31 @@ _CONSTANTS: Final = {
     "PIC-2111": 105.0, "PDI-2112": 28.5, "LIC-2113": 50.0, "LIC-2114": 50.0,
 }  # fmt: skip
 _NOISE: Final = 2e-4
+
+
+def toy_policies(example: Policies) -> Policies:
+    """The example site's policies with the tuning that the toy is made for.
+
+    The site file may be tuned for its column; stories and numbers in tests stay as they are.
+    """
+    reflux, tray = example.moves[REFLUX], example.moves[TRAY]
+    reflux = replace(reflux, price=0.15, weight=0.2, scale=100.0, max_move=200.0,
+                     worthwhile_move=80.0, increment=20.0, rate_limit_per_min=100.0)  # fmt: skip
+    tray = replace(tray, price=0.0, weight=0.5, scale=1.0, max_move=1.0,
+                   worthwhile_move=0.5, increment=0.1, rate_limit_per_min=0.5)  # fmt: skip
+    bottoms, distillate = (example.cvs[cv] for cv in CVS)
+    bottoms = replace(bottoms, hard_high=500.0, high=350.0, setpoint=150.0, weight=1.0,
+                      soft_linear=2.0, soft_quadratic=20.0)  # fmt: skip
+    distillate = replace(distillate, hard_high=0.5, high=0.4, setpoint=None, weight=0.0,
+                         soft_linear=2.0, soft_quadratic=20.0)  # fmt: skip
+    return replace(
+        example,
+        moves={**example.moves, REFLUX: reflux, TRAY: tray},
+        cvs={**example.cvs, "BOTTOMS": bottoms, "DISTILLATE": distillate},
+        cycle=replace(example.cycle, period_s=30.0, budget_s=20.0, journal_wait_s=2.0,
+                      hold_limit=10, validity_s=90.0, warm_up_cycles=3, restore_max_age_s=900.0),
+        advice=AdvicePolicy(interval_s=300.0, act_within_s=120.0, repeat_limit_h=6),
+    )  # fmt: skip
 
 
 def settled(cv: str, moves: Mapping[str, float], push: float, truth: float = 1.0) -> float:
@@ -201,7 +226,7 @@ class ToyPlanner:
             predictions=predictions,
             cost_with=self._cost(asked, best),
             cost_without=self._cost(asked, still),
-            gives_way=(),
+            gives_way=tuple(p.cv for p in predictions if _gives_way(p, limits[p.cv].high)),
             statistics=SolverStatistics("toy", "solved", True, 1, 0.0, 0.0, 0.0),
         )
 
@@ -290,6 +315,12 @@ def _logs(asked: _Question, cv: str, moves: Mapping[str, Path]) -> list[float]:
             if step:
                 path = [at + step * share for at, share in zip(path, arrived, strict=True)]
     return path
+
+
+def _gives_way(prediction: CvPrediction, high: float | None) -> bool:
+    """Whether the planned limit is still broken once the moves have had time to act."""
+    late = [v for at, v in zip(TIMES_MIN, prediction.with_moves, strict=True) if at > 20.0]
+    return high is not None and max(late) > 1.02 * high
 
 
 def _in_unit(logs: list[float]) -> Path:

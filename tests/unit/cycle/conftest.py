@@ -17,14 +17,15 @@ from edgectl.records.plan import CvPrediction, Plan, PlannedMove, PlanRequest
 from edgectl.records.readings import TagSnapshot
 from edgectl.runtime.policies import policies_from
 from edgectl.settings import load_site
-from edgectl.testing.toy import REFLUX, TRAY, ToyPlanner, ToyPlant
+from edgectl.testing.toy import REFLUX, TRAY, ToyPlanner, ToyPlant, toy_policies
 
 NOW = 1_767_592_800.0
 
 
 @pytest.fixture(scope="session")
 def policies(repo_root: Path) -> Policies:
-    return policies_from(load_site(repo_root / "deploy/examples/methanol_water.toml"))
+    example = load_site(repo_root / "deploy/examples/methanol_water.toml")
+    return toy_policies(policies_from(example))
 
 
 @pytest.fixture(autouse=True)

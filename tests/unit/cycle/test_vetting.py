@@ -138,7 +138,8 @@ def test_planned_limits_may_be_tighter_never_wider(case: Any) -> None:
             replace(found, high=high) if found.cv == "BOTTOMS" else found
             for found in case.plan.estimate.cvs
         )
-        return replace(case.plan, estimate=replace(case.plan.estimate, cvs=cvs))
+        plan: Plan = replace(case.plan, estimate=replace(case.plan.estimate, cvs=cvs))
+        return plan
 
     assert any("wider" in finding for finding in findings(case, with_high(400.0)))
     assert any("wider" in finding for finding in findings(case, with_high(None)))
