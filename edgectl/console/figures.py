@@ -205,13 +205,15 @@ def percentiles_ms(values: Sequence[float], *shares: float) -> dict[str, float |
 
 
 def loop_lag_ms(decisions: Sequence[DecisionRecord]) -> dict[str, float | None]:
-    """p99: what 99 % of the cycles stayed under with their own p99; and the worst of all [ms]."""
-    if not decisions:
-        return {"p99": None, "max": None}
-    worst = percentile([d.loop_lag.p99_ms for d in decisions], 0.99)
+    """The 99 % share of the cycles' own p99, and the worst sample of all [ms].
+
+    A cycle keeps its p99 and not its samples; this lies above the p99 of all samples.
+    """
+    p99 = percentile((d.loop_lag.p99_ms for d in decisions), 0.99)
+    worst = max((d.loop_lag.max_ms for d in decisions), default=None)
     return {
-        "p99": None if worst is None else round(worst, 3),
-        "max": round(max(d.loop_lag.max_ms for d in decisions), 3),
+        "p99": None if p99 is None else round(p99, 3),
+        "max": None if worst is None else round(worst, 3),
     }
 
 
