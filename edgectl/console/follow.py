@@ -9,7 +9,7 @@ from typing import Self
 from edgectl.console.history import SiteWords
 from edgectl.console.live import LiveView
 from edgectl.console.svg import clock_words
-from edgectl.journal.reader import JournalReader, StoredEntry
+from edgectl.journal.reader import JournalReader, JournalUnreadableError, StoredEntry
 from edgectl.records.cycle_record import (
     DecisionRecord,
     EventRecord,
@@ -46,7 +46,11 @@ class JournalFollower:
         if self._reader is None:
             if not self._path.exists() or self._path.stat().st_size == 0:
                 return
-            self._reader = JournalReader(self._path)
+            try:
+                self._reader = JournalReader(self._path)
+            except JournalUnreadableError:
+                # It is being made this very moment; a lasting fault shows in the summary.
+                return
         for entry in self._reader.entries(first_seq=self._next_seq):
             self._next_seq = entry.seq + 1
             self._show(entry, view)
