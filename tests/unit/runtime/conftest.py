@@ -1,4 +1,4 @@
-"""The policies of the example site file, and silence in the log."""
+"""The policies of the example site file with the toy's tuning, and silence in the log."""
 
 from __future__ import annotations
 
@@ -12,11 +12,13 @@ import structlog
 from edgectl.cycle.policies import Policies
 from edgectl.runtime.policies import policies_from
 from edgectl.settings import load_site
+from edgectl.testing.toy import toy_policies
 
 
 @pytest.fixture(scope="session")
 def policies(repo_root: Path) -> Policies:
-    return policies_from(load_site(repo_root / "deploy/examples/methanol_water.toml"))
+    example = load_site(repo_root / "deploy/examples/methanol_water.toml")
+    return toy_policies(policies_from(example))
 
 
 @pytest.fixture(autouse=True)
