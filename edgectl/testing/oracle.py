@@ -159,7 +159,8 @@ def _one_cause_one_event(played: Played) -> Iterator[str]:
             standing.discard(key)
     allowed = len(played.script.faults) + len(played.starts)
     for key, count in raised.items():
-        if count > allowed:
+        # These have their causes in the plant, not in the script.
+        if key[0] not in ("limit_gives_way", "outside_limits") and count > allowed:
             yield f"I5 {key}: raised {count} times for {allowed} causes"
 
 
