@@ -98,20 +98,9 @@ def decide(
         judged = replace(judged, plan=None, reason="operator_off", why=off, forbids=True)
     state = _remembering(state, validated, request, outcome, judged.vetting, now, policies)
     begun_with = state.pace.suggestions
-    suggested: Suggested | None = None
-    if judged.plan is not None and request is not None and measurements is not None:
+    suggested, judged = _suggested(state, judged, request, measurements, now, policies)
+    if suggested is not None and measurements is not None:
         standing = good_cycle(state.standing, policies.cycle.warm_up_cycles)
-        if standing.standing is Standing.ADVISING:
-            pace = _pace_to_go_on_from(state)
-            assert judged.vetting is not None
-            suggested = suggest(
-                pace, judged.plan, judged.vetting, request, measurements.positions, now, policies
-            )
-            if suggested.findings:
-                why = f"what would have been suggested was refused: {suggested.findings[0]}"
-                vetting = replace(judged.vetting, findings=suggested.findings)
-                judged = _Judged(None, "failed_vetting", why, vetting)
-    if suggested is not None and not suggested.findings:
         state = replace(state, standing=standing, pace=suggested.pace)
         advice = _advising(state, suggested, measurements, judged.plan, cycle, now, policies)
     else:
@@ -287,6 +276,36 @@ def _standing_without(
     return poor_cycle(standing, policies.cycle.hold_limit)
 
 
+def _suggested(
+    state: LoopState,
+    judged: _Judged,
+    request: PlanRequest | None,
+    measurements: Measurements | None,
+    now: float,
+    policies: Policies,
+) -> tuple[Suggested | None, _Judged]:
+    """What would stand at the board, vetted; None during the warm-up and without a plan."""
+    warming = state.standing.good_cycles < policies.cycle.warm_up_cycles
+    if judged.plan is None or judged.vetting is None or warming:
+        return None, judged
+    assert request is not None
+    assert measurements is not None
+    found = suggest(
+        _pace_to_go_on_from(state),
+        judged.plan,
+        judged.vetting,
+        request,
+        measurements.positions,
+        now,
+        policies,
+    )
+    if not found.findings:
+        return found, judged
+    why = f"what would have been suggested was refused: {found.findings[0]}"
+    vetting = replace(judged.vetting, findings=found.findings)
+    return None, _Judged(None, "failed_vetting", why, vetting)
+
+
 def _pace_to_go_on_from(state: LoopState) -> PaceState:
     """After silence or a start nothing of what was suggested before it stands."""
     if state.standing.standing in (Standing.ADVISING, Standing.HOLDING):
@@ -300,13 +319,12 @@ def _pace_to_go_on_from(state: LoopState) -> PaceState:
 def _advising(
     state: LoopState,
     suggested: Suggested,
-    measurements: Measurements | None,
+    measurements: Measurements,
     plan: Plan | None,
     cycle: int,
     now: float,
     policies: Policies,
 ) -> Advice:
-    assert measurements is not None
     asked = [s.made_at for s in suggested.pace.suggestions.values() if s.asks]
     return Advice(
         cycle=cycle,
