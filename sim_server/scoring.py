@@ -6,11 +6,12 @@ True values go to a file and never to OPC UA: no runtime can peek at them.
 
 from __future__ import annotations
 
+import argparse
 import csv
 import json
 import sys
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import asdict, dataclass
+from dataclasses import asdict, dataclass, replace
 from pathlib import Path
 from typing import Final, TextIO
 
@@ -36,7 +37,7 @@ class Specification:
 
 
 SPECIFICATIONS: Final = (
-    Specification("BOTTOMS", "bottoms_methanol_wt_ppm", "wt ppm", high=500.0, aim=150.0),
+    Specification("BOTTOMS", "bottoms_methanol_wt_ppm", "wt ppm", high=500.0),
     Specification("DISTILLATE", "distillate_water_wt_pct", "wt %", high=0.5),
 )
 
@@ -152,12 +153,22 @@ def _quality(rows: Sequence[Mapping[str, float]], spec: Specification) -> Qualit
 
 def main(arguments: Sequence[str] | None = None) -> int:
     """Print the score of the one truth file that is named; the exit code."""
-    names = sys.argv[1:] if arguments is None else arguments
-    if len(names) != 1:
-        sys.stderr.write("usage: python -m sim_server.scoring TRUTH.csv\n")
-        return 2
+    parser = argparse.ArgumentParser(prog="sim_server.scoring")
+    parser.add_argument("truth", type=Path)
+    parser.add_argument(
+        "--aim",
+        action="append",
+        default=[],
+        metavar="NAME=VALUE",
+        help="where a product was to be held; may be given again",
+    )
+    options = parser.parse_args(arguments)
     try:
-        found = score(read_truth(Path(names[0])))
+        aims = {name: float(value) for name, value in (aim.split("=") for aim in options.aim)}
+        specifications = [
+            replace(spec, aim=aims.get(spec.name, spec.aim)) for spec in SPECIFICATIONS
+        ]
+        found = score(read_truth(options.truth), specifications=specifications)
     except (OSError, ValueError, KeyError) as error:
         sys.stderr.write(f"sim_server.scoring: {error}\n")
         return 1

@@ -13,7 +13,7 @@ from typing import Any, Final, Protocol
 from rich.console import Console
 from rich.text import Text
 
-from edgectl.console.demo_score import WriteCounts, count_writes_in, cv_scores
+from edgectl.console.demo_score import WriteCounts, aims, count_writes_in, cv_scores
 from edgectl.console.figures import summary
 from edgectl.console.history import read_history
 from edgectl.console.morning import (
@@ -79,7 +79,7 @@ async def demo_result(site: Site, folder: Path, story: Story, pace: Pace) -> Dem
     write_report(history, chain, journal, report)
     writes = count_writes_in(folder / "writes.jsonl", site.write_fence())
     plant_s = len(history.decisions) * pace.period_s
-    score = await _score(folder / "truth.csv")
+    score = await _score(folder / "truth.csv", aims(site))
     content: dict[str, Any] = {
         "schema": SCHEMA,
         "crew": story.crew,
@@ -115,10 +115,11 @@ async def demo_result(site: Site, folder: Path, story: Story, pace: Pace) -> Dem
     return DemoResult(content, sentences)
 
 
-async def _score(truth: Path) -> Mapping[str, Any] | None:
+async def _score(truth: Path, aimed: Mapping[str, float]) -> Mapping[str, Any] | None:
     """The plant's own score of its true values; None when there are none yet."""
     process = await asyncio.create_subprocess_exec(
         *(sys.executable, "-m", "sim_server.scoring", str(truth)),
+        *(word for name, value in aimed.items() for word in ("--aim", f"{name}={value!r}")),
         stdout=asyncio.subprocess.PIPE,
         stderr=asyncio.subprocess.DEVNULL,
     )

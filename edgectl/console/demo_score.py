@@ -52,6 +52,16 @@ def count_writes_in(path: Path, fence: frozenset[str]) -> WriteCounts:
         return count_writes(lines, fence)
 
 
+def aims(site: Site) -> dict[str, float]:
+    """Where each quality is to be held: its setpoint, or the planned limit it may walk to."""
+    found = {}
+    for name, cv in site.cv.items():
+        aim = cv.high if cv.setpoint is None else cv.setpoint
+        if cv.role == "quality" and isinstance(aim, float | int):
+            found[name] = float(aim)
+    return found
+
+
 def cv_scores(site: Site, score: Mapping[str, Any]) -> dict[str, dict[str, object]]:
     """By tag: role, unit, share inside the hard limits, mean error from the aim.
 

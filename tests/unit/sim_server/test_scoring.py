@@ -29,7 +29,7 @@ def test_a_run_is_scored_after_its_first_hour() -> None:
     bottoms, distillate = result.qualities
     assert (result.rows, result.from_s, result.to_s) == (2, 3630.0, 3660.0)
     assert bottoms.in_spec_fraction == 0.5
-    assert bottoms.mean_abs_error == pytest.approx(225.0)
+    assert bottoms.mean_abs_error is None
     assert distillate.in_spec_fraction == 1.0
     assert distillate.mean_abs_error is None
     assert result.energy_kwh_per_t_distillate == pytest.approx(800.0)
@@ -75,6 +75,12 @@ def test_the_command_prints_the_score_or_says_what_is_wrong(
     said = json.loads(capsys.readouterr().out)
     assert said["energy_kwh_per_t_distillate"] == pytest.approx(5000.0 / 7.0)
     assert said["qualities"][0]["in_spec_fraction"] == 0.5
+    assert main([str(path), "--aim", "BOTTOMS=150"]) == 0
+    aimed = json.loads(capsys.readouterr().out)["qualities"]
+    assert aimed[0]["mean_abs_error"] == pytest.approx(250.0)
+    assert aimed[1]["mean_abs_error"] is None
+    assert main([str(path), "--aim", "BOTTOMS"]) == 1
     assert main([str(tmp_path / "none.csv")]) == 1
-    assert main([]) == 2
+    with pytest.raises(SystemExit, match="2"):
+        main([])
     assert "none.csv" in capsys.readouterr().err
