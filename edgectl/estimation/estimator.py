@@ -22,6 +22,8 @@ from edgectl.estimation.tracking import (
 from edgectl.records.measurements import Measurement
 from edgectl.records.plan import CvEstimate, CvLimits, Estimate, PlanRequest, ProfileStage
 
+CLIPPED_RESULTS = 3
+"""Results in a row beyond belief, after which model and analyser contradict each other."""
 LONGEST_GAP_S = 900.0
 """A memory older than this is not carried on: the model is settled afresh."""
 
@@ -246,10 +248,16 @@ class BiasEstimator:
                 "model_duty_kw": state.duty_kw,
             },
             profile=self._profile(state),
-            warnings=("model_mismatch",) if self.tracker.mismatched(state) else (),
+            warnings=self._warnings(state, biases),
             memory=pack(state, biases, history),
         )
         return Belief(state, inputs, biases, history, limits, in_service, estimate, restarted)
+
+    def _warnings(self, state: TrackedState, biases: Mapping[str, Bias]) -> tuple[str, ...]:
+        """Why this estimate should not be advised from; empty when all is well."""
+        mismatched = ("model_mismatch",) if self.tracker.mismatched(state) else ()
+        at_clip = any(bias.clipped >= CLIPPED_RESULTS for bias in biases.values())
+        return (*mismatched, *(("bias_at_clip",) if at_clip else ()))
 
     def _profile(self, state: TrackedState) -> tuple[ProfileStage, ...]:
         looped = self.tracker.looped

@@ -205,7 +205,6 @@ class ModelTracker:
         settings = self.settings
         return float(min(max(fraction, settings.composition_low), settings.composition_high))
 
-
     def _drum_level(self, state: TrackedState, inputs: PlantInputs, hours: float) -> float:
         if inputs.drum_level is None:
             return math.nan
@@ -262,6 +261,8 @@ class Bias:
     value: float
     sample_time: float | None
     """Of the newest result used; None before the first."""
+    clipped: int = 0
+    """Results in a row that were farther off than is believed."""
 
     def age_s(self, now: float) -> float:
         return math.inf if self.sample_time is None else max(0.0, now - self.sample_time)
@@ -304,9 +305,11 @@ def corrected(
         innovation = min(0.0, innovation)
     clip = settings.innovation_clip
     # The first result sets the bias: there is nothing to filter against yet.
-    first = bias.sample_time is None
-    step = innovation if first else settings.filter_gain * min(max(innovation, -clip), clip)
-    return Bias(bias.value + step, sample_time)
+    if bias.sample_time is None:
+        return Bias(bias.value + innovation, sample_time)
+    step = settings.filter_gain * min(max(innovation, -clip), clip)
+    clipped = bias.clipped + 1 if abs(innovation) > clip else 0
+    return Bias(bias.value + step, sample_time, clipped)
 
 
 class History:
@@ -352,7 +355,7 @@ def pack(
     }
     for name, bias in biases.items():
         sample = math.nan if bias.sample_time is None else bias.sample_time
-        rows[f"bias.{name}"] = (bias.value, sample)
+        rows[f"bias.{name}"] = (bias.value, sample, float(bias.clipped))
         rows[f"history.{name}"] = tuple(history.rows[name])
     return rows
 
@@ -369,7 +372,7 @@ def unpack(memory: Memory, cvs: Sequence[str]) -> tuple[TrackedState, dict[str, 
     state = TrackedState(made_at, np.array(memory["point"]), *rest)
     biases = {}
     for name in cvs:
-        value, sample = memory[f"bias.{name}"]
-        biases[name] = Bias(value, None if math.isnan(sample) else sample)
+        value, sample, clipped = memory[f"bias.{name}"]
+        biases[name] = Bias(value, None if math.isnan(sample) else sample, int(clipped))
     rows = {name: memory[f"history.{name}"] for name in cvs}
     return state, biases, History(memory["history_times"], rows)

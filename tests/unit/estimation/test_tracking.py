@@ -119,6 +119,14 @@ def test_an_innovation_is_clipped_but_the_first_result_sets_the_bias() -> None:
     assert corrected(Bias(0.0, None), SETTINGS, 1.0, 0.9, 0.0, False).value == pytest.approx(0.9)
 
 
+def test_results_beyond_belief_are_counted_in_a_row() -> None:
+    bias = Bias(0.0, 0.0)
+    for sample in (1.0, 2.0, 3.0):
+        bias = corrected(bias, SETTINGS, sample, 9.0, 0.0, False)
+    assert bias.clipped == 3
+    assert corrected(bias, SETTINGS, 4.0, bias.value, 0.0, False).clipped == 0
+
+
 def test_at_most_never_raises_a_bias() -> None:
     below = corrected(Bias(0.0, 0.0), SETTINGS, 1.0, 0.3, 0.0, True)
     above = corrected(Bias(0.0, 0.0), SETTINGS, 1.0, -0.3, 0.0, True)
@@ -138,7 +146,7 @@ def test_memory_is_carried_without_loss(tracker: ModelTracker) -> None:
     state = tracker.start(INPUTS, 10.0)
     history = History([], {})
     history.append(10.0, {"B": 1.5, "D": -1.0})
-    biases = {"B": Bias(0.1, 5.0), "D": Bias(0.0, None)}
+    biases = {"B": Bias(0.1, 5.0, 2), "D": Bias(0.0, None)}
     again, biases_again, history_again = unpack(pack(state, biases, history), ["B", "D"])
     assert np.array_equal(again.point, state.point)
     assert replace(again, point=state.point) == state

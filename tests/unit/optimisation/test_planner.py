@@ -105,6 +105,19 @@ def test_memory_carries_the_model_on(
     assert len(second.estimate.memory["history_times"]) == 2
 
 
+def test_an_analyser_that_contradicts_the_model_is_a_warning(
+    planner: Planner, site_table: dict[str, Any], first: Plan
+) -> None:
+    memory, at = first.estimate.memory, AT
+    for _ in range(4):
+        at += 600.0
+        request = replace(request_at(site_table, at, **{"AI-2116": 4900.0}), memory=memory)
+        answer = planner.answer(request)
+        assert isinstance(answer, Plan)
+        memory = answer.estimate.memory
+    assert answer.estimate.warnings == ("bias_at_clip",)
+
+
 def test_an_mv_in_manual_is_a_fixed_input(planner: Planner, site_table: dict[str, Any]) -> None:
     request = request_at(site_table)
     fixed = replace(request.positions[0], service=Service.FIXED, reason="loop_in_manual")
