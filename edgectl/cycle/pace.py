@@ -8,7 +8,9 @@ A plan is made every cycle; a suggestion changes only when it is worth it:
 - an MV whose planned *destination* is at least `worthwhile_move` away. Judging the
   first move instead would deadlock: move suppression keeps every first move small;
 - by the plan's first move, which the planner has rounded to what can be entered;
-- back from where it was just moved to only for twice the reason.
+- back from where it was just moved to only for twice the reason;
+- not while the base layer is moving the MV after the feed: the number would be old
+  before anyone could enter it.
 
 A suggestion that was not taken stays while the plans still point there; when they
 no longer do, its target becomes the present position. So does a target from which
@@ -172,7 +174,7 @@ def _worth_a_hand(
     step, planned = move.first - at.position, move.destination - at.position
     if abs(step) < policy.increment / 2.0 or step * planned <= 0.0:
         return False
-    if not _allowed(step, at.service):
+    if not _allowed(step, at.service) or abs(at.drift) > policy.worthwhile_move:
         return False
     made_at, last = state.last_step.get(mv := move.mv, (-math.inf, 0.0))
     elapsed_min = (now - made_at) / 60.0

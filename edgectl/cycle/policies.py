@@ -64,6 +64,9 @@ class MovePolicy:
     price: float
     follow_tolerance: float
     follow_cycles: int
+    in_ratio_to: str | None = None
+    """Tag of the feed that the base layer keeps this MV in ratio to."""
+    ratio_filter_s: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)

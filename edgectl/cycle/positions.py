@@ -7,6 +7,7 @@ MV fixed, or fixed in one direction, and the reason says which.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from typing import Final
@@ -21,6 +22,8 @@ SATURATED_CYCLES: Final = 3
 SATURATED_LOW: Final = 1.0
 SATURATED_HIGH: Final = 99.0
 """Output beyond which a valve counts as at its end, per cent."""
+LIGHT_FILTER_S: Final = 60.0
+"""Of a feed flow, to tell where it goes from its noise."""
 WHOLE: Final = 1e-6
 """A mode is a whole number: farther from one than this it is not a mode."""
 
@@ -35,11 +38,24 @@ class LoopMemory:
 
 
 @dataclass(frozen=True, slots=True)
+class FeedMemory:
+    """The feed that an MV is kept in ratio to."""
+
+    lightly: float
+    """Filtered enough to tell a change from noise."""
+    filtered: float
+    """As the base layer filters it."""
+    at: float
+
+
+@dataclass(frozen=True, slots=True)
 class Seen:
     """What validation carries from cycle to cycle."""
 
     tags: TagMemories = field(default_factory=dict)
     loops: Mapping[str, LoopMemory] = field(default_factory=dict)
+    feeds: Mapping[str, FeedMemory] = field(default_factory=dict)
+    """By MV."""
     switched_on: bool | None = None
     """The operator's switch as last read; None before."""
 
@@ -56,9 +72,14 @@ class Validated:
 def validate(snapshot: TagSnapshot, seen: Seen, policies: Policies) -> Validated:
     """The measurements of a snapshot, given what was seen before."""
     values, tags = measure(snapshot, seen.tags, policies)
-    positions, loops = {}, {}
+    positions, loops, feeds = {}, {}, dict(seen.feeds)
     for mv, policy in policies.moves.items():
         positions[mv], loops[mv] = _position(policy, values, seen.loops.get(mv, LoopMemory()))
+        if policy.in_ratio_to is not None:
+            feed = _usable(values, policy.in_ratio_to)
+            if feed is not None:
+                feeds[mv] = _filtered(policy, feed, feeds.get(mv), snapshot.received_at)
+            positions[mv] = _carried_along(positions[mv], feeds.get(mv))
     limits, unread = _cv_limits(values, policies)
     missing = [
         tag
@@ -74,7 +95,7 @@ def validate(snapshot: TagSnapshot, seen: Seen, policies: Policies) -> Validated
         advice_wanted=wanted,
         missing_required=tuple(dict.fromkeys([*missing, *unread])),
     )
-    return Validated(measurements, limits, Seen(tags, loops, remembered))
+    return Validated(measurements, limits, Seen(tags, loops, feeds, remembered))
 
 
 def _usable(values: Mapping[str, Measurement], tag: str) -> float | None:
@@ -150,6 +171,31 @@ def _one_way(loop: LoopMemory) -> Service:
     if loop.at_low_end >= SATURATED_CYCLES:
         return Service.RAISE_ONLY
     return Service.FREE
+
+
+def _filtered(policy: MovePolicy, feed: float, before: FeedMemory | None, now: float) -> FeedMemory:
+    if before is None:
+        return FeedMemory(feed, feed, now)
+    elapsed_s = max(0.0, now - before.at)
+    lightly = _lagged(before.lightly, feed, elapsed_s, LIGHT_FILTER_S)
+    return FeedMemory(
+        lightly, _lagged(before.filtered, feed, elapsed_s, policy.ratio_filter_s), now
+    )
+
+
+def _lagged(before: float, value: float, elapsed_s: float, filter_s: float) -> float:
+    keep = math.exp(-elapsed_s / filter_s) if filter_s > 0.0 else 0.0
+    return keep * before + (1.0 - keep) * value
+
+
+def _carried_along(at: MovePosition, feed: FeedMemory | None) -> MovePosition:
+    """The position, with what the base layer will do to it by itself."""
+    if feed is None or at.position is None or feed.filtered <= 0.0:
+        return at
+    drift = 0.0
+    if at.service is not Service.FIXED:
+        drift = at.position * (feed.lightly / feed.filtered - 1.0)
+    return replace(at, feed=feed.filtered, drift=drift)
 
 
 def _cv_limits(

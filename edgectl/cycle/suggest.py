@@ -77,7 +77,7 @@ def _suggestion(
     here = target if at.position is None else at.position
     if mv in choice.new:
         action = sentences.action(policy, here, target)
-        return Suggestion(mv, target, now, here, True, reason, action, clause)
+        return Suggestion(mv, target, now, here, True, reason, action, clause, feed=at.feed)
     stays = standing is not None and standing.target == target
     if standing is not None and stays and (mv in choice.asks or not standing.open):
         return standing

@@ -6,6 +6,7 @@ operator did is read from the plant's positions, recorded, and never nagged abou
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from typing import Final
@@ -37,6 +38,8 @@ class Suggestion:
     """Why."""
     outcome: str = "pending"
     """See `FollowUp.outcome`."""
+    feed: float | None = None
+    """Filtered feed at `made_at`, where the base layer keeps the MV in ratio to it."""
 
     @property
     def sentence(self) -> str:
@@ -55,22 +58,40 @@ def followed(
     """The suggestion with what has become of it. `taken` is final: the base layer may move on."""
     if not suggestion.open or at.position is None:
         return suggestion
-    return replace(suggestion, outcome=_outcome(suggestion, at.position, now, policy, advice))
+    return replace(suggestion, outcome=_outcome(suggestion, at, now, policy, advice))
 
 
 def _outcome(
-    suggestion: Suggestion, here: float, now: float, policy: MovePolicy, advice: AdvicePolicy
+    suggestion: Suggestion,
+    at: MovePosition,
+    now: float,
+    policy: MovePolicy,
+    advice: AdvicePolicy,
 ) -> str:
     asked = suggestion.target - suggestion.before
+    here = at.position
+    assert here is not None
     share = (here - suggestion.before) / asked if asked else 1.0
     if share >= TAKEN_SHARE or abs(here - suggestion.target) <= policy.increment / 2.0:
         return "taken"
-    if share >= PART_SHARE:
+    share = max(share, _share_after_feed(suggestion, at))
+    moved = abs(here - suggestion.before)
+    if share >= PART_SHARE and moved > policy.increment / 2.0:
         return "part_taken"
-    # A base layer that keeps a ratio moves a little by itself: opposing takes a real step.
-    if share <= -PART_SHARE and abs(here - suggestion.before) >= policy.worthwhile_move / 2.0:
+    # A setpoint that follows a noisy feed is never quite still: opposing takes a real step.
+    if share <= -PART_SHARE and moved >= policy.worthwhile_move / 2.0:
         return "opposed"
     return "pending" if now - suggestion.made_at <= advice.act_within_s else "ignored"
+
+
+def _share_after_feed(suggestion: Suggestion, at: MovePosition) -> float:
+    """The share of the way, without what the base layer did after the feed; of two readings
+    of the same number the kinder one counts, for it is a person's doing that is judged.
+    """
+    if suggestion.feed is None or at.feed is None or at.position is None or at.feed <= 0.0:
+        return -math.inf
+    without_feed = at.position * suggestion.feed / at.feed
+    return (without_feed - suggestion.before) / (suggestion.target - suggestion.before)
 
 
 def follow_ups(

@@ -68,6 +68,10 @@ class MovePosition:
     high: float
     reason: str
     """`in_service`, `loop_in_manual`, `output_saturated`, `not_followed`, ..."""
+    feed: float | None = None
+    """The filtered feed that the base layer keeps this MV in ratio to, if it does."""
+    drift: float = 0.0
+    """How far the base layer will still move the MV after that feed, in the MV's unit."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -86,6 +86,8 @@ def _move(name: str, mv: ManipulatedVariable) -> MovePolicy:
         price=mv.price,
         follow_tolerance=mv.follow_tolerance,
         follow_cycles=mv.follow_cycles,
+        in_ratio_to=mv.in_ratio_to,
+        ratio_filter_s=60.0 * (mv.ratio_filter_min or 0.0),
     )
 
 

@@ -258,3 +258,10 @@ def test_a_plant_far_outside_its_limits_is_not_led_back_in_one_jump(case: Any) -
     assert outside_reach(at(case, REFLUX, position=6250.0), case.policies) == REFLUX
     manual = at(case, REFLUX, position=6250.0, service=Service.FIXED)
     assert outside_reach(manual, case.policies) is None
+
+
+def test_nothing_is_asked_while_the_base_layer_moves_the_mv(case: Any) -> None:
+    plan = case.planned(reflux=(8960.0, 8800.0), **QUIET)
+    assert not pick(case, plan, positions=at(case, REFLUX, drift=90.0)).new
+    assert not pick(case, plan, positions=at(case, REFLUX, drift=-90.0)).new
+    assert pick(case, plan, positions=at(case, REFLUX, drift=70.0)).new

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import replace
 
 import pytest
@@ -49,7 +50,8 @@ class Board:
 
 def test_in_automatic_an_mv_stands_at_its_setpoint(policies: Policies) -> None:
     found = Board(policies).reflux(REFLUX_SP=8000.0, FIC_2103=8040.0)
-    assert found == MovePosition(REFLUX, 8000.0, Service.FREE, 6500.0, 9500.0, "in_service")
+    expected = MovePosition(REFLUX, 8000.0, Service.FREE, 6500.0, 9500.0, "in_service")
+    assert replace(found, feed=None, drift=0.0) == expected
 
 
 def test_in_manual_it_is_fixed_where_the_plant_is(policies: Policies) -> None:
@@ -147,3 +149,21 @@ def test_the_switch_stays_where_it_was_while_it_cannot_be_read(policies: Policie
 
 def test_without_a_switch_advice_is_wanted(policies: Policies) -> None:
     assert Board(replace(policies, switch=None)).look(ADVICE_ON=0.0).measurements.advice_wanted
+
+
+def test_an_mv_in_ratio_tells_how_far_the_feed_will_still_carry_it(policies: Policies) -> None:
+    board = Board(policies)
+    steady = board.reflux(FIC_2101=18_000.0)
+    assert (steady.feed, steady.drift) == (18_000.0, 0.0)
+    for _ in range(4):
+        moving = board.reflux(FIC_2101=19_440.0)
+    # The station filters the feed by 5 min: after 2 min two thirds of 8 % are still to come.
+    assert moving.feed == pytest.approx(18_000.0 * (1.0 + 0.08 * (1.0 - math.exp(-0.4))))
+    assert moving.position is not None
+    assert 0.03 * moving.position < moving.drift < 0.06 * moving.position
+    for _ in range(120):
+        settled = board.reflux(FIC_2101=19_440.0)
+    assert settled.drift == pytest.approx(0.0, abs=1.0)
+    # Not read: what was known stays.
+    assert board.reflux(FIC_2101=None).feed == settled.feed
+    assert board.look(FIC_2101=18_000.0).measurements.positions["TIC-2107"].feed is None

@@ -64,3 +64,19 @@ def test_what_asks_for_no_hand_is_not_followed(case: Any) -> None:
     assert outcome(case, 9400.0, 900.0, stays) == "pending"
     assert stays.sentence == "It is cheaper."
     assert MADE.sentence == "Lower it: it is cheaper."
+
+
+def test_what_the_base_layer_moved_after_the_feed_is_nobodys_doing(case: Any) -> None:
+    made = replace(MADE, feed=18_000.0)
+    policy, advice = case.policies.moves[REFLUX], case.policies.advice
+
+    def outcome_at(position: float, feed: float) -> str:
+        place = replace(case.positions[REFLUX], position=position, feed=feed)
+        return followed(made, place, NOW + 60.0, policy, advice).outcome
+
+    # The feed rose by 2 %, and the reflux with it.
+    assert outcome_at(9180.0, 18_360.0) == "pending"
+    # The same number without a change of the feed is a hand's work.
+    assert outcome_at(9180.0, 18_000.0) == "opposed"
+    # Half of what was asked, on top of the feed's own 2 %.
+    assert outcome_at(9078.0, 18_360.0) == "part_taken"
