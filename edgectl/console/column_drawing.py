@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from edgectl.console.history import SiteWords
+from edgectl.console.morning import asks
 from edgectl.console.svg import Drawing, Scale, number_words
 from edgectl.records.advice import Standing
 from edgectl.records.cycle_record import DecisionRecord
@@ -88,7 +89,7 @@ def _feed(drawing: Drawing, site: SiteWords, down: Scale) -> None:
 def _moves(drawing: Drawing, record: DecisionRecord, site: SiteWords, down: Scale) -> None:
     """Each MV at its place: where it is and, while one stands, what is suggested."""
     standing = record.advice.standing
-    targets = {move.mv: move.target for move in record.advice.moves}
+    targets = {move.mv: move.target for move in record.advice.moves if asks(move)}
     for mv, where in record.positions.items():
         y = down(site.stage_of_mv(mv))
         drawing.line((LEFT - 24, y), (LEFT, y), "pipe")

@@ -49,6 +49,11 @@ def value_words(site: SiteWords, name: str, value: float | None) -> str:
     return f"{number_words(value)} {site.unit(name)}".rstrip()
 
 
+def asks(move: SuggestedMove) -> bool:
+    """Whether a hand is asked for: not once it was taken, nor where nothing shall change."""
+    return move.target is not None and move.reason not in ("taken", "no_change")
+
+
 def suggestion_words(site: SiteWords, move: SuggestedMove, position: float | None) -> str:
     """`FIC-2103 reflux flow: 7,900 kg/h, now at 8,000 kg/h`."""
     name = f"{move.mv} {site.description(move.mv)}"
@@ -56,7 +61,9 @@ def suggestion_words(site: SiteWords, move: SuggestedMove, position: float | Non
     there = value_words(site, move.mv, position)
     if position is None:
         return f"{name}: {target}"
-    return f"{name}: stays at {there}" if there == target else f"{name}: {target}, now at {there}"
+    if there == target or not asks(move):
+        return f"{name}: stays at {there}"
+    return f"{name}: {target}, now at {there}"
 
 
 def holds_answer(history: History) -> str:

@@ -26,8 +26,8 @@ BUDGET_SHARE: Final = 0.8
 FASTEST: Final = 60.0
 """The plant and the rest of a cycle need their time too: half a second of wall per 30 s."""
 USUAL_HOURS: Final = 1.0
-STEPS: Final = (1.0, 1.0, 1.01, 1.03, 1.0, 0.98)
-"""Feed relative to the operating point, cycle by cycle: what the solver meets is not at rest."""
+STEPS: Final = (1.0, 1.0, 1.08, 1.08, 1.08, 1.0)
+"""Feed relative to the operating point, cycle by cycle: the largest step of the default story."""
 
 
 class PaceError(PortError):
