@@ -21,11 +21,11 @@ from edgectl.estimation.estimator import Belief, MissingInputError
 from edgectl.estimation.outputs import KELVIN
 from edgectl.optimisation.collocation import CollocationEngine
 from edgectl.optimisation.from_site import site_model, steady_from_site
-from edgectl.optimisation.problem import NO_LIMIT, Engine, Situation, Solution, plan_cost
+from edgectl.optimisation.problem import Engine, Situation, Solution, plan_cost
 from edgectl.optimisation.rollout import Rollout, roll_out
+from edgectl.optimisation.situations import Situations
 from edgectl.records.encoding import dumps
 from edgectl.records.entries import Json
-from edgectl.records.measurements import MovePosition, Service
 from edgectl.records.plan import (
     CvPrediction,
     Estimate,
@@ -41,6 +41,8 @@ Vector = NDArray[np.float64]
 ROUNDING_SLACK = 1e-9
 GIVES_WAY = 0.02
 """Excess over a planned limit, in the planning coordinate, that counts as giving way."""
+ROLLOUTS_AFTERWARDS = 4.0
+"""Rollouts after the solve (with the moves, each alone), and one to spare."""
 SETTLED_MIN = 20.0
 """Predictions earlier than this show the past, not the plan."""
 
@@ -69,6 +71,7 @@ class Planner:
         self.steady = steady_from_site(site)
         self._steady_ms = 1e3 * (wall() - begun)
         self._parts = site_model(site, self.steady)
+        self.situations = Situations(self._parts, self._increments)
         self._engine: Engine = CollocationEngine(
             self._parts.looped, self._parts.goals, site["planning"]["max_iterations"], wall
         )
@@ -81,10 +84,8 @@ class Planner:
 
     def warm_up(self) -> None:
         """Solve once at the operating point, so that the first real answer is not the slow one."""
-        goals = self._parts.goals
-        situation = self._nominal_situation()
-        guess = np.tile(situation.positions[:, None], (1, goals.moves))
-        self._engine.solve(situation, guess, math.inf)
+        situation = self.situations.nominal()
+        self._engine.solve(situation, self._held(situation), math.inf)
 
     def answer(self, request: PlanRequest) -> Plan | NoPlan:
         """Estimate, plan, round, and predict with and without the rounded moves."""
@@ -95,10 +96,14 @@ class Planner:
             return NoPlan(request.request_id, "no_estimate", str(error), None, None)
         estimated = self._wall()
         try:
-            situation, guess = self._situation(request, belief)
-            left_s = request.soft_deadline_s - (estimated - begun)
+            situation, guess = self.situations.of(request, belief)
+            without = self._rolled_out(situation, self._held(situation), None)
+            # What one rollout took tells what those after the solve will take.
+            rolled_out = self._wall()
+            kept_back_s = ROLLOUTS_AFTERWARDS * (rolled_out - estimated)
+            left_s = request.soft_deadline_s - (rolled_out - begun) - kept_back_s
             solution = self._engine.solve(situation, guess, left_s)
-            return self._plan(request, belief, situation, solution, begun, estimated)
+            return self._plan(request, belief, situation, solution, without, begun, estimated)
         except StepFailedError as error:
             return NoPlan(request.request_id, "no_plan", str(error), None, belief.estimate)
 
@@ -120,162 +125,31 @@ class Planner:
             "loop_tray_temperature_degc": steady.states[self._parts.loop.stage].temp_k - KELVIN,
         }
 
-    # ------------------------------------------------------------ situations
-
-    def _nominal_situation(self) -> Situation:
-        parts, goals = self._parts, self._parts.goals
-        point = parts.looped.steady_point
-        kmol_per_kg = 1.0 / molar_mass(float(point[0]), parts.looped.model.column)
-        positions = np.array(
-            [
-                self.steady.inputs.reflux_kmol_h / kmol_per_kg
-                if mv.kind == "reflux"
-                else float(parts.looped.tray_temp_k(point)) - KELVIN
-                for mv in goals.mvs
-            ]
-        )
-        free = np.tile(positions[:, None], (1, goals.moves))
-        spread = np.array([mv.max_move for mv in goals.mvs])[:, None]
-        cvs = len(goals.cvs)
-        return Situation(
-            start=point,
-            drive=replace(
-                parts.estimator.tracker._steady,
-                gain_kw_k=parts.loop.gain_kw_k,
-                reset_h=parts.loop.reset_h,
-            ),
-            positions=positions,
-            low=free - 4.0 * spread,
-            high=free + 4.0 * spread,
-            feed_ratio=np.ones(goals.intervals),
-            kmol_per_kg=kmol_per_kg,
-            bias=np.zeros(cvs),
-            cv_low=np.full(cvs, -NO_LIMIT),
-            cv_high=np.full(cvs, NO_LIMIT),
-            cv_setpoint=np.full(cvs, np.nan),
-            in_service=np.ones(cvs),
-        )
-
-    def _situation(self, request: PlanRequest, belief: Belief) -> tuple[Situation, Vector]:
-        parts, goals, state = self._parts, self._parts.goals, belief.state
-        looped, loop = parts.looped, parts.loop
-        at = {position.mv: position for position in request.positions}
-        positions = np.array([_value(at[mv.name]) for mv in goals.mvs])
-        drive = replace(
-            parts.estimator.tracker.drive(state, belief.inputs),
-            gain_kw_k=loop.gain_kw_k,
-            reset_h=loop.reset_h,
-        )
-        start = state.point.copy()
-        reference = next(
-            (
-                positions[j]
-                for j, mv in enumerate(goals.mvs)
-                if mv.kind == "tray_temperature_setpoint"
-            ),
-            state.tray_temp_degc,
-        )
-        # The plant's integrator: today's duty less what the proportional part asks for.
-        start[looped.integral_at] = state.duty_kw - loop.gain_kw_k * (
-            reference - state.tray_temp_degc
-        )
-        start[looped.duty_at] = state.duty_kw
-        low, high = self._move_limits(at, positions)
-        names = [cv.output.name for cv in goals.cvs]
-        situation = Situation(
-            start=start,
-            drive=drive,
-            positions=positions,
-            low=low,
-            high=high,
-            feed_ratio=self._feed_ratio(belief),
-            kmol_per_kg=1.0 / molar_mass(float(state.point[0]), looped.model.column),
-            bias=np.array([belief.biases[name].value for name in names]),
-            cv_low=self._coordinates(belief, "low", -NO_LIMIT),
-            cv_high=self._coordinates(belief, "high", NO_LIMIT),
-            cv_setpoint=self._coordinates(belief, "setpoint", math.nan),
-            in_service=np.array([float(belief.in_service[name]) for name in names]),
-        )
-        return situation, self._first_guess(request, belief, positions)
-
-    def _coordinates(self, belief: Belief, which: str, absent: float) -> Vector:
-        values = []
-        for cv in self._parts.goals.cvs:
-            value = getattr(belief.limits[cv.output.name], which)
-            values.append(absent if value is None else cv.output.to_coordinate(value))
-        return np.array(values)
-
-    def _feed_ratio(self, belief: Belief) -> Vector:
-        """Filtered feed in each interval over its value now, where reflux follows the feed."""
-        goals, state = self._parts.goals, belief.state
-        filter_h = self._parts.estimator.tracker.settings.ratio_filter_h
-        if filter_h <= 0.0:
-            return np.ones(goals.intervals)
-        middles = np.cumsum(goals.grid_h) - np.array(goals.grid_h) / 2.0
-        coming = state.feed_kg_h + (state.ratio_feed_kg_h - state.feed_kg_h) * np.exp(
-            -middles / filter_h
-        )
-        ratio: Vector = coming / state.ratio_feed_kg_h
-        return ratio
-
-    def _move_limits(
-        self, at: Mapping[str, MovePosition], positions: Vector
-    ) -> tuple[Vector, Vector]:
-        """Bounds of every move; an MV out of service is a fixed input."""
-        goals = self._parts.goals
-        low = np.empty((len(goals.mvs), goals.moves))
-        high = np.empty_like(low)
-        for j, (mv, increment) in enumerate(zip(goals.mvs, self._increments, strict=True)):
-            given, here = at[mv.name], positions[j]
-            down, up = given.low, given.high
-            if given.service in (Service.FIXED, Service.RAISE_ONLY):
-                down = here
-            if given.service in (Service.FIXED, Service.LOWER_ONLY):
-                up = here
-            # Outside its limits an MV comes back at the pace of moves, not in one jump;
-            # an increment of room keeps a value that can be entered within that pace.
-            reach = mv.max_move * np.arange(1, goals.moves + 1) - increment
-            low[j] = np.minimum(down, np.maximum(here, here + reach))
-            high[j] = np.maximum(up, np.minimum(here, here - reach))
-            if given.service is Service.FIXED:
-                low[j] = high[j] = here
-        return low, high
-
-    def _first_guess(self, request: PlanRequest, belief: Belief, positions: Vector) -> Vector:
-        goals = self._parts.goals
-        held = np.tile(positions[:, None], (1, goals.moves))
-        rows = request.memory.get("moves")
-        if belief.restarted or rows is None or len(rows) != held.size:
-            return held
-        return np.array(rows).reshape(held.shape)
-
-    # ------------------------------------------------------------ the plan
-
     def _plan(
         self,
         request: PlanRequest,
         belief: Belief,
         situation: Situation,
         solution: Solution,
+        without: Rollout,
         begun: float,
         estimated: float,
     ) -> Plan | NoPlan:
-        goals, looped = self._parts.goals, self._parts.looped
+        goals = self._parts.goals
         if not np.all(np.isfinite(solution.moves)):
             statistics = self._statistics(solution, begun, estimated)
             sentence = "the engine returned moves that are not numbers"
             return NoPlan(request.request_id, "no_plan", sentence, statistics, belief.estimate)
         rounded = self._rounded(situation, solution.moves)
-        held = np.tile(situation.positions[:, None], (1, goals.moves))
+        held = self._held(situation)
         # Only a converged trajectory is a good guess; a stopped one may be anywhere.
-        near = solution.points if solution.converged else None
-        with_moves = roll_out(looped, goals, situation, rounded, near)
-        without = roll_out(looped, goals, situation, held, with_moves.points)
+        near = solution.points if solution.converged else without.points
+        with_moves = self._rolled_out(situation, rounded, near)
         alone = {}
         for j, mv in enumerate(goals.mvs):
             only = held.copy()
             only[j] = rounded[j]
-            alone[mv.name] = roll_out(looped, goals, situation, only, with_moves.points)
+            alone[mv.name] = self._rolled_out(situation, only, with_moves.points)
         return Plan(
             request_id=request.request_id,
             cycle=request.cycle,
@@ -288,6 +162,13 @@ class Planner:
             gives_way=self._gives_way(situation, with_moves),
             statistics=self._statistics(solution, begun, estimated),
         )
+
+    def _held(self, situation: Situation) -> Vector:
+        """Every move repeats the present position."""
+        return np.tile(situation.positions[:, None], (1, self._parts.goals.moves))
+
+    def _rolled_out(self, situation: Situation, moves: Vector, near: Vector | None) -> Rollout:
+        return roll_out(self._parts.looped, self._parts.goals, situation, moves, near)
 
     def _rounded(self, situation: Situation, moves: Vector) -> Vector:
         """The first move rounded to what an operator can enter; the rest as planned."""
@@ -387,9 +268,3 @@ class Planner:
 def build_brain(site: Mapping[str, Any], wall: Callable[[], float]) -> Planner:
     """The planner of a validated site file; the worker's entry point."""
     return Planner(site, wall)
-
-
-def _value(position: MovePosition) -> float:
-    if position.position is None:
-        raise MissingInputError(f"the position of {position.mv} is not known")
-    return position.position

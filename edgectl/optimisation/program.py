@@ -38,7 +38,7 @@ _IPOPT = {
 
 
 class SoftDeadline(ca.Callback):
-    """Stops IPOPT after an iteration that ends past the soft deadline; it keeps its iterate."""
+    """Stops IPOPT when another iteration would end past the deadline; it keeps its iterate."""
 
     def __init__(self, interval: Interval, goals: Goals, wall: Callable[[], float]) -> None:
         ca.Callback.__init__(self)
@@ -56,12 +56,13 @@ class SoftDeadline(ca.Callback):
             "lam_p": parameters,
         }
         self._wall = wall
-        self._ends = 0.0
+        self._ends = self._last = 0.0
         self.construct("soft_deadline", {})
 
     def start(self, seconds: float) -> None:
         """Begin counting."""
-        self._ends = self._wall() + seconds
+        self._last = self._wall()
+        self._ends = self._last + seconds
 
     def get_n_in(self) -> int:
         return int(ca.nlpsol_n_out())
@@ -77,7 +78,9 @@ class SoftDeadline(ca.Callback):
         return ca.Sparsity.dense(size, 1)
 
     def eval(self, arg: Any) -> list[Any]:
-        return [1 if self._wall() > self._ends else 0]
+        now = self._wall()
+        took, self._last = now - self._last, now
+        return [1 if now + took > self._ends else 0]
 
 
 def assemble(

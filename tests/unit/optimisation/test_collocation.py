@@ -16,7 +16,7 @@ from edgectl.optimisation.rollout import roll_out
 @pytest.fixture(scope="module")
 def tight(planner: Planner) -> Situation:
     """Both products must become purer than they are: limits that bite."""
-    nominal = planner._nominal_situation()
+    nominal = planner.situations.nominal()
     return replace(
         nominal,
         cv_high=np.log([200.0, 0.30]),
