@@ -30,6 +30,8 @@ from edgectl.console.svg import clock_words, escaped, number_words
 from edgectl.records.advice import Standing
 from edgectl.records.cycle_record import DecisionRecord
 
+LONG_SENTENCE = 100
+"""Characters; longer ones are set smaller."""
 MOST_ROWS = 60
 """Longer lists show their newest part, and say so."""
 
@@ -147,7 +149,7 @@ def _opening(history: History, latest: DecisionRecord) -> str:
     asked = "".join(f"<dt>{escaped(q)}</dt><dd>{escaped(a)}</dd>" for q, a in answers)
     return (
         "<section class='opening'><div>"
-        + _p(advice.sentence, "lede")
+        + _p(advice.sentence, "lede long" if len(advice.sentence) > LONG_SENTENCE else "lede")
         + _p(stood, "standing-line")
         + f"<ul class='targets'>{''.join(targets)}</ul>"
         + notices
