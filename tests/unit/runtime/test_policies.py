@@ -1,0 +1,47 @@
+"""From the site file to the policies: nothing is lost, and what is derived is right."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pytest
+
+from edgectl.runtime.policies import policies_from
+from edgectl.settings import Site, load_site
+
+
+@pytest.fixture(scope="module")
+def site(repo_root: Path) -> Site:
+    return load_site(repo_root / "deploy/examples/methanol_water.toml")
+
+
+def test_everything_is_there_in_the_order_of_the_file(site: Site) -> None:
+    found = policies_from(site)
+    assert list(found.tags) == list(site.tags)
+    assert list(found.moves) == list(site.mv)
+    assert list(found.cvs) == list(site.cv)
+    assert found.switch == "ADVICE-ON"
+
+
+def test_what_is_derived(site: Site) -> None:
+    found = policies_from(site)
+    assert found.tags["AI-2116"].stale_after_s == 2.5 * 600.0
+    assert not found.tags["TI-2107"].use_uncertain, "required: certain or nothing"
+    assert found.tags["TI-2109"].use_uncertain
+    assert found.cvs["BOTTOMS"].logarithmic
+    assert found.cvs["BOTTOMS"].quality
+    assert not found.cvs["TRAY30"].quality
+    assert found.cycle.future_tolerance_s == site.server.clock_offset_limit_s
+    reflux = found.moves["FIC-2103"]
+    assert (reflux.in_ratio_to, reflux.ratio_filter_s) == ("FIC-2101", 300.0)
+
+
+def test_every_number_of_a_move_and_a_cv_is_the_files(site: Site) -> None:
+    found = policies_from(site)
+    renamed = {"mv", "cv", "logarithmic", "quality", "ratio_filter_s"}
+    for name, policy in [*found.moves.items(), *found.cvs.items()]:
+        section = site.mv[name] if name in site.mv else site.cv[name]
+        fields = [f for f in type(policy).__dataclass_fields__ if f not in renamed]
+        assert fields
+        for field in fields:
+            assert getattr(policy, field) == getattr(section, field), (name, field)
