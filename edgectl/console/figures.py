@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import math
+from bisect import bisect_left
 from collections import Counter
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, replace
 
 from edgectl.console.history import History
 from edgectl.records.advice import Standing
-from edgectl.records.cycle_record import DecisionRecord
+from edgectl.records.cycle_record import DecisionRecord, LoopLag
 from edgectl.records.measurements import Verdict
 
 SETTLED = ("taken", "part_taken", "ignored", "opposed")
@@ -205,16 +206,42 @@ def percentiles_ms(values: Sequence[float], *shares: float) -> dict[str, float |
 
 
 def loop_lag_ms(decisions: Sequence[DecisionRecord]) -> dict[str, float | None]:
-    """The 99 % share of the cycles' own p99, and the worst sample of all [ms].
-
-    A cycle keeps its p99 and not its samples; this lies above the p99 of all samples.
-    """
-    p99 = percentile((d.loop_lag.p99_ms for d in decisions), 0.99)
-    worst = max((d.loop_lag.max_ms for d in decisions), default=None)
+    """The p99 of all samples, bounded from above, and the worst of all [ms]."""
+    lags = [decision.loop_lag for decision in decisions]
+    p99 = pooled_p99_ms(lags)
+    worst = max((lag.max_ms for lag in lags), default=None)
     return {
         "p99": None if p99 is None else round(p99, 3),
         "max": None if worst is None else round(worst, 3),
     }
+
+
+def pooled_p99_ms(lags: Sequence[LoopLag]) -> float | None:
+    """An upper bound of the p99 of all samples: cycles keep three ranks, not their samples.
+
+    The smallest lag that at most 1 % of all samples can lie above, each cycle counted at its
+    worst. None without samples.
+    """
+    total = sum(lag.samples for lag in lags)
+    if total == 0:
+        return None
+    ranks = sorted({rank for lag in lags for rank in (lag.p90_ms, lag.p99_ms, lag.max_ms)})
+    return ranks[
+        bisect_left(
+            ranks, True, key=lambda x: sum(_most_above(lag, x) for lag in lags) <= 0.01 * total
+        )
+    ]
+
+
+def _most_above(lag: LoopLag, limit_ms: float) -> int:
+    """How many samples of a cycle can lie above `limit_ms`."""
+    if lag.max_ms <= limit_ms:
+        return 0
+    if lag.p99_ms <= limit_ms:
+        return lag.samples - math.ceil(0.99 * lag.samples)
+    if lag.p90_ms <= limit_ms:
+        return lag.samples - math.ceil(0.90 * lag.samples)
+    return lag.samples
 
 
 def record_bytes(history: History) -> int | None:

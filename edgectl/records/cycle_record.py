@@ -43,6 +43,9 @@ class LoopLag:
 
     p99_ms: float
     max_ms: float
+    p90_ms: float = 0.0
+    samples: int = 0
+    """With these the p99 of many cycles can be bounded; 0 in records that lack them."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -35,5 +35,5 @@ class LagProbe:
         self._samples_ms.clear()
         if not ranked:
             return LoopLag(0.0, 0.0)
-        p99 = ranked[math.ceil(0.99 * len(ranked)) - 1]
-        return LoopLag(round(p99, 3), round(ranked[-1], 3))
+        p90, p99 = (ranked[math.ceil(share * len(ranked)) - 1] for share in (0.90, 0.99))
+        return LoopLag(round(p99, 3), round(ranked[-1], 3), round(p90, 3), len(ranked))

@@ -149,7 +149,7 @@ class InventedShift:
             else None,
             budget_ms=2000.0,
             timings=PhaseTimings(0.4, 11.0, 0.5, solve_ms, 0.8),
-            loop_lag=LoopLag(2.0 + self._random.random(), 6.0 + self._random.random()),
+            loop_lag=LoopLag(5.0 + self._random.random(), 6.0 + self._random.random(), 2.0, 30),
             provenance=WHO,
         )
 

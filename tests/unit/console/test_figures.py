@@ -2,17 +2,21 @@
 
 from __future__ import annotations
 
+import math
 import statistics
 from dataclasses import replace
 from itertools import pairwise
 
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 
 from edgectl.console.figures import (
     loop_lag_ms,
     made_moves,
     overruns,
     percentile,
+    pooled_p99_ms,
     refused_plans,
     solve_times_ms,
     spells,
@@ -24,6 +28,7 @@ from edgectl.console.figures import (
 )
 from edgectl.console.history import History
 from edgectl.records.advice import Standing
+from edgectl.records.cycle_record import LoopLag
 
 
 def test_percentiles_are_those_of_the_standard_library() -> None:
@@ -118,3 +123,23 @@ def test_a_stretch_joins_spells_of_one_standing_and_names_all_reasons(shift: His
     assert joined[1].reason == "input_bad, over_budget"
     assert (joined[1].begin, joined[1].end) == (found[4].begin, other.end + 30.0)
     assert joined[1].cycles == 30
+
+
+@given(st.lists(st.lists(st.floats(0.0, 200.0), min_size=1, max_size=300), min_size=1, max_size=30))
+def test_the_pooled_p99_is_never_below_the_true_one(cycles: list[list[float]]) -> None:
+    bound = pooled_p99_ms([lag_of(samples) for samples in cycles])
+    pooled = sorted(sample for samples in cycles for sample in samples)
+    assert bound is not None
+    assert bound >= pooled[math.ceil(0.99 * len(pooled)) - 1]
+    assert bound <= pooled[-1]
+
+
+def test_two_late_samples_among_many_are_not_the_p99() -> None:
+    quiet, late = [4.0] * 28, [4.0] * 27 + [70.0]
+    assert pooled_p99_ms([lag_of(quiet)] * 58 + [lag_of(late)] * 2) == 4.0
+
+
+def lag_of(samples: list[float]) -> LoopLag:
+    ranked = sorted(samples)
+    p90, p99 = (ranked[math.ceil(share * len(ranked)) - 1] for share in (0.90, 0.99))
+    return LoopLag(p99, ranked[-1], p90, len(ranked))
