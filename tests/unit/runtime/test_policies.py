@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 from pathlib import Path
 
 import pytest
@@ -41,7 +42,7 @@ def test_every_number_of_a_move_and_a_cv_is_the_files(site: Site) -> None:
     renamed = {"mv", "cv", "logarithmic", "quality", "ratio_filter_s"}
     for name, policy in [*found.moves.items(), *found.cvs.items()]:
         section = site.mv[name] if name in site.mv else site.cv[name]
-        fields = [f for f in type(policy).__dataclass_fields__ if f not in renamed]
-        assert fields
-        for field in fields:
-            assert getattr(policy, field) == getattr(section, field), (name, field)
+        names = [field.name for field in dataclasses.fields(policy) if field.name not in renamed]
+        assert names
+        for key in names:
+            assert getattr(policy, key) == getattr(section, key), (name, key)
