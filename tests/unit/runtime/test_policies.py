@@ -7,6 +7,7 @@ from pathlib import Path
 
 import pytest
 
+from edgectl.cycle.policies import CvPolicy, MovePolicy
 from edgectl.runtime.policies import policies_from
 from edgectl.settings import Site, load_site
 
@@ -40,7 +41,8 @@ def test_what_is_derived(site: Site) -> None:
 def test_every_number_of_a_move_and_a_cv_is_the_files(site: Site) -> None:
     found = policies_from(site)
     renamed = {"mv", "cv", "logarithmic", "quality", "ratio_filter_s"}
-    for name, policy in [*found.moves.items(), *found.cvs.items()]:
+    policies: list[tuple[str, MovePolicy | CvPolicy]] = [*found.moves.items(), *found.cvs.items()]
+    for name, policy in policies:
         section = site.mv[name] if name in site.mv else site.cv[name]
         names = [field.name for field in dataclasses.fields(policy) if field.name not in renamed]
         assert names
