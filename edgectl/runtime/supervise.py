@@ -78,13 +78,14 @@ class Runtime:
         self._lag = lag or LagProbe(ports.clock)
         self._first_cycle = begin.first_cycle
         self._cycles = 0
+        self._opened = False
         self.loop = Loop(ports, policies, opening.provenance, begin.state, self._lag)
         self.stop = asyncio.Event()
         """Set it to end the run, in the middle of a cycle if need be."""
 
     async def run(self, max_cycles: int | None = None) -> Ending:
         """Run until `stop` is set or so many cycles are over. Bugs are raised, advice withdrawn."""
-        await self._write_down(EntryKind.OPENED, self._opening)
+        self._opened = await self._write_down(EntryKind.OPENED, self._opening)
         reason, sentence = "fault", FAULT
         try:
             await self._until_stopped(max_cycles)
@@ -119,6 +120,9 @@ class Runtime:
             tick = Tick(self._first_cycle + self._cycles, now, wall, late_s, skipped)
             report = await self.loop.run_cycle(tick)
             self._cycles += 1
+            if not self._opened and report.receipt is not None:
+                # The journal takes entries again; late is better than never.
+                self._opened = await self._write_down(EntryKind.OPENED, self._opening)
             for observer in self._observers:
                 observer(report)
             if self._cycles == policy.warm_up_cycles:

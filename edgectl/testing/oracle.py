@@ -142,8 +142,8 @@ def _one_decision_then_its_delivery(played: Played) -> Iterator[str]:
 def _one_cause_one_event(played: Played) -> Iterator[str]:
     raised: dict[tuple[str, str], int] = {}
     standing: set[tuple[str, str]] = set()
-    for row in played.journal.rows:
-        if row.entry.kind is EntryKind.OPENED:
+    for k, row in enumerate(played.journal.rows):
+        if k in played.rows_at_start:
             standing.clear()
         if row.entry.kind is not EntryKind.EVENT:
             continue

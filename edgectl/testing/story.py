@@ -81,6 +81,9 @@ class Played:
     begun_with: list[int] = field(default_factory=list)
     """Length of `reports` at each start. Cycles that never got on record may be run again."""
 
+    rows_at_start: list[int] = field(default_factory=list)
+    """Length of the journal at each start."""
+
     @property
     def runs(self) -> list[list[CycleReport]]:
         """The reports of each start."""
@@ -181,6 +184,7 @@ def _runtime(
     begin = restored(body, seq, WHO.model_hash, clock.plant_time(), policies)
     played.starts.append(begin.first_cycle)
     played.begun_with.append(len(played.reports))
+    played.rows_at_start.append(len(played.journal.rows))
     opening = OpeningRecord(
         WHO, "toy", "toy", begin.from_seq, begin.words, clock.speed,
         policies.cycle.period_s, policies.cycle.budget_s,

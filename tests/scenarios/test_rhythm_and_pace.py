@@ -169,6 +169,15 @@ def test_a_restart_goes_on_from_the_memory_and_warms_up(policies: Policies) -> N
     assert problems(played) == []
 
 
+def test_an_opening_that_the_journal_refused_is_written_when_it_takes_entries(
+    policies: Policies,
+) -> None:
+    played = play(policies, 12, [Fault("restart", 4), Fault("failing_journal", 4, 3)])
+    openings = [row.seq for row in played.journal.rows if row.entry.kind is EntryKind.OPENED]
+    assert len(openings) == 2
+    assert problems(played) == []
+
+
 def test_a_run_that_ends_withdraws_and_says_so(policies: Policies) -> None:
     played = play(policies, 6)
     assert played.sink.nodes["valid"] is False
