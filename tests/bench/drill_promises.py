@@ -8,6 +8,7 @@ left out where a promise is about something else.
 from __future__ import annotations
 
 import itertools
+import math
 from collections.abc import Callable, Sequence
 
 from drill_checks import (
@@ -69,7 +70,9 @@ def common(evidence: Evidence) -> Verdicts:
         untimely[0] if untimely else f"{len(left)} actions{nearest}",
     )
     lag = loop_lag_ms(evidence.records)
-    p99, worst = lag["p99"] or 0.0, lag["max"] or 0.0
+    # Nothing measured is nothing shown.
+    p99 = math.inf if lag["p99"] is None else lag["p99"]
+    worst = math.inf if lag["max"] is None else lag["max"]
     yield Verdict(
         f"event loop never blocked: lag p99 < {LAG_P99_MS:g} ms, max < {LAG_MAX_MS:g} ms",
         p99 < LAG_P99_MS and worst < LAG_MAX_MS,
