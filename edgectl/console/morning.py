@@ -104,15 +104,17 @@ def budget_answer(history: History) -> str:
 def tags_answer(history: History) -> str:
     """Which tags could not be used?"""
     found = unused_tags(history.decisions)
+    blind = sum(decision.outcome == "no_data" for decision in history.decisions)
+    away = f"The plant could not be read in {counted(blind, 'cycle')}. " if blind else ""
     if not found:
-        return "Every tag was usable in every cycle."
+        return f"{away}Every tag was usable in every cycle{' that read it' if blind else ''}."
     named = "; ".join(
         f"{tag.tag} in {counted(tag.cycles, 'cycle')} ({tag.why}"
         f"{', and still now' if tag.unused_now else f', last at {clock_words(tag.last_at)}'})"
         for tag in found[:LONGEST_LIST]
     )
     more = len(found) - LONGEST_LIST
-    return f"Not used: {named}{f'; and {more} more' if more > 0 else ''}."
+    return f"{away}Not used: {named}{f'; and {more} more' if more > 0 else ''}."
 
 
 def moves_answer(history: History) -> str:

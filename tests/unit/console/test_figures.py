@@ -27,6 +27,7 @@ from edgectl.console.figures import (
     uptake,
 )
 from edgectl.console.history import History
+from edgectl.console.morning import tags_answer
 from edgectl.records.advice import Standing
 from edgectl.records.cycle_record import LoopLag
 
@@ -143,3 +144,11 @@ def lag_of(samples: list[float]) -> LoopLag:
     ranked = sorted(samples)
     p90, p99 = (ranked[math.ceil(share * len(ranked)) - 1] for share in (0.90, 0.99))
     return LoopLag(p99, ranked[-1], p90, len(ranked))
+
+
+def test_cycles_without_a_plant_are_not_called_usable(shift: History) -> None:
+    first, second = shift.decisions[3:5]
+    history = History(decisions=[first, replace(second, outcome="no_data", measurements={})])
+    assert tags_answer(history) == (
+        "The plant could not be read in 1 cycle. Every tag was usable in every cycle that read it."
+    )
