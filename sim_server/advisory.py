@@ -36,6 +36,11 @@ ADVISORY_KINDS: Final[Mapping[str, type[Written]]] = {
 """What user `advisor` may write, and what kind of value each one takes."""
 
 
+ASKED: Final = frozenset((None, "economics", "limit_reached", "setpoint", "only_together"))
+"""Reasons at a target that ask for a hand (or none was given). With any other one the target
+only says where the loop stands, and nobody enters it again."""
+
+
 @dataclass(slots=True)
 class AdvisoryBoard:
     """What was last written to the advisory nodes and to the switch."""
@@ -67,11 +72,13 @@ class AdvisoryBoard:
         return self._time("ADV.made_at")
 
     def targets(self) -> dict[str, float | None]:
-        """Suggested setpoints by loop; None where nothing stands."""
-        written = {move: self.values.get(f"ADV.{move}.target") for move in MOVES}
-        return {
-            move: value if isinstance(value, float) else None for move, value in written.items()
-        }
+        """Suggested setpoints by loop; None where nothing stands or nothing is asked."""
+        found: dict[str, float | None] = {}
+        for move in MOVES:
+            value = self.values.get(f"ADV.{move}.target")
+            asked = self.values.get(f"ADV.{move}.reason") in ASKED
+            found[move] = value if asked and isinstance(value, float) else None
+        return found
 
     def _time(self, name: str) -> float | None:
         value = self.values.get(name)

@@ -99,6 +99,7 @@ class Rig:
         for move in advice.moves:
             if move.target is not None:
                 board.write(f"ADV.{move.mv}.target", float(move.target), now)
+            board.write(f"ADV.{move.mv}.reason", move.reason, now)
         if advice.made_at is not None:
             board.write("ADV.made_at", datetime.fromtimestamp(advice.made_at, UTC), now)
         board.write("ADV.valid_until", datetime.fromtimestamp(advice.valid_until, UTC), now)
