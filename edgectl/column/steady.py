@@ -301,7 +301,7 @@ def _settle(problem: _Problem, unknowns: Vector) -> Vector:
             break
         matrix = settling.jacobian(unknowns) - np.diag(is_light / step)
         unknowns = _bounded_step(unknowns, np.linalg.solve(matrix, -residual))
-        step *= 1.6
+        step *= 2.5
     return unknowns
 
 
