@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+
 from edgectl.console.charts import OUTCOME_WORDS
 from edgectl.console.figures import (
     MadeMove,
@@ -19,6 +21,8 @@ from edgectl.console.svg import clock_words, number_words
 from edgectl.records.advice import Standing, SuggestedMove
 
 LONGEST_LIST = 6
+ASKING = ("economics", "limit_reached", "setpoint", "only_together")
+"""Reasons at a move that ask for a hand; with any other the target only says where it stands."""
 
 
 def duration_words(seconds: float) -> str:
@@ -50,8 +54,8 @@ def value_words(site: SiteWords, name: str, value: float | None) -> str:
 
 
 def asks(move: SuggestedMove) -> bool:
-    """Whether a hand is asked for: not once it was taken, nor where nothing shall change."""
-    return move.target is not None and move.reason not in ("taken", "no_change")
+    """Whether a hand is asked for: not once it was taken, withheld, or nothing shall change."""
+    return move.target is not None and move.reason in ASKING
 
 
 def suggestion_words(site: SiteWords, move: SuggestedMove, position: float | None) -> str:
@@ -141,9 +145,15 @@ def _uptake_words(moves: list[MadeMove]) -> str:
 
 
 def events_answer(history: History) -> list[str]:
-    """Causes that are still raised at the end of the stretch."""
+    """Causes that are still raised at the end of the stretch.
+
+    A runtime that was killed cleared nothing: what the newest start has not raised anew is over.
+    """
     standing: dict[tuple[str, str], str] = {}
+    started = history.openings[-1].at if history.openings else -math.inf
     for dated in history.events:
+        if dated.at < started:
+            continue
         record = dated.record
         key = (getattr(record, "event", ""), getattr(record, "subject", ""))
         if getattr(record, "raised", False):
