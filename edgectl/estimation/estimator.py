@@ -19,7 +19,7 @@ from edgectl.estimation.tracking import (
     pack,
     unpack,
 )
-from edgectl.records.measurements import Measurement
+from edgectl.records.measurements import Measurement, Verdict
 from edgectl.records.plan import CvEstimate, CvLimits, Estimate, PlanRequest, ProfileStage
 
 CLIPPED_RESULTS = 3
@@ -147,13 +147,13 @@ class BiasEstimator:
         tags = self.tags
 
         def needed(tag: str) -> float:
-            value = measured[tag].value if tag in measured else None
+            value = _believed(measured.get(tag))
             if value is None:
                 raise MissingInputError(f"{tag} has no usable value and the model needs it")
             return value
 
         def optional(tag: str | None, otherwise: float) -> float:
-            value = measured[tag].value if tag is not None and tag in measured else None
+            value = None if tag is None else _believed(measured.get(tag))
             return otherwise if value is None else value
 
         return PlantInputs(
@@ -248,15 +248,24 @@ class BiasEstimator:
                 "model_duty_kw": state.duty_kw,
             },
             profile=self._profile(state),
-            warnings=self._warnings(state, biases),
+            warnings=self._warnings(state, biases, request.made_at),
             memory=pack(state, biases, history),
         )
         return Belief(state, inputs, biases, history, limits, in_service, estimate, restarted)
 
-    def _warnings(self, state: TrackedState, biases: Mapping[str, Bias]) -> tuple[str, ...]:
+    def _warnings(
+        self, state: TrackedState, biases: Mapping[str, Bias], now: float
+    ) -> tuple[str, ...]:
         """Why this estimate should not be advised from; empty when all is well."""
         mismatched = ("model_mismatch",) if self.tracker.mismatched(state) else ()
-        at_clip = any(bias.clipped >= CLIPPED_RESULTS for bias in biases.values())
+        # A dropped CV is left out of the plan: an analyser that died while it contradicted
+        # the model must not silence the advice for ever.
+        at_clip = any(
+            biases[cv.output.name].clipped >= CLIPPED_RESULTS
+            and biases[cv.output.name].state(cv.bias, now) != "dropped"
+            for cv in self.cvs
+            if cv.bias is not None
+        )
         return (*mismatched, *(("bias_at_clip",) if at_clip else ()))
 
     def _profile(self, state: TrackedState) -> tuple[ProfileStage, ...]:
@@ -270,3 +279,15 @@ class BiasEstimator:
             ProfileStage(stage, round(temp - KELVIN, 3), round(light, 6))
             for stage, (temp, light) in enumerate(zip(temps, lights, strict=True))
         )
+
+
+def _believed(found: Measurement | None) -> float | None:
+    """The value this cycle may rest on.
+
+    A refused measurement keeps its last usable value, which may be hours old: that one
+    counts only where validation lets it stand in.
+    """
+    if found is None:
+        return None
+    stands_in = found.note == "substituted" or found.verdict is Verdict.TOO_FAST
+    return found.value if found.usable or stands_in else None

@@ -11,7 +11,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -301,6 +301,9 @@ def corrected(
     if bias.sample_time is not None and sample_time <= bias.sample_time:
         return bias
     innovation = measured - (predicted + bias.value)
+    if not math.isfinite(innovation):
+        # Once in a bias, it would stay there and travel through every restart.
+        return bias
     if at_most:
         innovation = min(0.0, innovation)
     clip = settings.innovation_clip
@@ -369,6 +372,8 @@ def unpack(memory: Memory, cvs: Sequence[str]) -> tuple[TrackedState, dict[str, 
         The memory is not one that `pack` made for these CVs.
     """
     made_at, *rest = memory["tracked"]
+    if len(rest) != len(fields(TrackedState)) - 2:
+        raise ValueError(f"a memory with {len(rest) + 1} tracked numbers is of another version")
     state = TrackedState(made_at, np.array(memory["point"]), *rest)
     biases = {}
     for name in cvs:

@@ -104,7 +104,7 @@ class Planner:
             left_s = request.soft_deadline_s - (rolled_out - begun) - kept_back_s
             solution = self._engine.solve(situation, guess, left_s)
             return self._plan(request, belief, situation, solution, without, begun, estimated)
-        except StepFailedError as error:
+        except (MissingInputError, StepFailedError) as error:
             return NoPlan(request.request_id, "no_plan", str(error), None, belief.estimate)
 
     def job(self, name: str, arguments: Mapping[str, Json]) -> Json:

@@ -134,6 +134,12 @@ def test_at_most_never_raises_a_bias() -> None:
     assert above.value == pytest.approx(-0.12)
 
 
+def test_what_is_not_a_number_never_enters_a_bias() -> None:
+    before = Bias(0.1, 0.0)
+    assert corrected(before, SETTINGS, 1.0, 0.3, math.nan, False) == before
+    assert corrected(Bias(0.0, None), SETTINGS, 1.0, math.nan, 0.3, True) == Bias(0.0, None)
+
+
 def test_a_dead_analyser_ages_tightens_and_is_dropped() -> None:
     bias = Bias(0.2, 0.0)
     words = [bias.state(SETTINGS, now) for now in (1000.0, 3600.0, 10801.0)]
@@ -152,3 +158,9 @@ def test_memory_is_carried_without_loss(tracker: ModelTracker) -> None:
     assert replace(again, point=state.point) == state
     assert biases_again == biases
     assert history_again.rows == history.rows
+
+
+def test_a_memory_of_another_version_is_refused(tracker: ModelTracker) -> None:
+    packed = pack(tracker.start(INPUTS, 10.0), {}, History([], {}))
+    with pytest.raises(ValueError, match="another version"):
+        unpack({**packed, "tracked": packed["tracked"][:-1]}, [])

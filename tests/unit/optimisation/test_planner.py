@@ -116,6 +116,13 @@ def test_an_analyser_that_contradicts_the_model_is_a_warning(
         assert isinstance(answer, Plan)
         memory = answer.estimate.memory
     assert answer.estimate.warnings == ("bias_at_clip",)
+    # It dies and is dropped: what is left out of the plan is no reason to be silent for ever.
+    later = replace(request_at(site_table, at + 10_900.0), memory=memory)
+    dead = tuple(m for m in later.measurements if m.tag != "AI-2116")
+    answer = planner.answer(replace(later, measurements=dead))
+    assert isinstance(answer, Plan)
+    assert answer.estimate.warnings == ()
+    assert {cv.cv: cv.state for cv in answer.estimate.cvs}["BOTTOMS"] == "dropped"
 
 
 def test_an_mv_in_manual_is_a_fixed_input(planner: Planner, site_table: dict[str, Any]) -> None:
@@ -157,6 +164,38 @@ def test_a_missing_flow_is_an_answer_with_a_reason(
     assert isinstance(answer, NoPlan)
     assert answer.reason == "no_estimate"
     assert "FIC-2105" in answer.sentence
+
+
+def test_a_refused_value_is_not_used_because_it_is_still_there(
+    planner: Planner, site_table: dict[str, Any]
+) -> None:
+    request = request_at(site_table)
+
+    def with_tray(verdict: Verdict) -> PlanRequest:
+        return replace(
+            request,
+            measurements=tuple(
+                replace(m, verdict=verdict) if m.tag == "TI-2107" else m
+                for m in request.measurements
+            ),
+        )
+
+    answer = planner.answer(with_tray(Verdict.BAD_QUALITY))
+    assert isinstance(answer, NoPlan)
+    assert "TI-2107" in answer.sentence
+    # One sample that jumped: validation lets the one before it stand in.
+    assert isinstance(planner.answer(with_tray(Verdict.TOO_FAST)), Plan)
+
+
+def test_an_unknown_position_is_an_answer_with_a_reason(
+    planner: Planner, site_table: dict[str, Any]
+) -> None:
+    request = request_at(site_table)
+    unknown = replace(request.positions[0], position=None, service=Service.FIXED)
+    answer = planner.answer(replace(request, positions=(unknown, request.positions[1])))
+    assert isinstance(answer, NoPlan)
+    assert answer.reason == "no_plan"
+    assert "FIC-2103" in answer.sentence
 
 
 def test_the_operating_point_is_a_job_and_others_are_refused(planner: Planner) -> None:
