@@ -17,6 +17,7 @@ from edgectl.cycle.validation import TagMemory
 from edgectl.records.cycle_record import DecisionRecord
 from edgectl.records.encoding import EncodingError, from_json
 from edgectl.records.entries import Json
+from edgectl.records.measurements import Verdict
 
 
 @dataclass(frozen=True, slots=True)
@@ -80,18 +81,25 @@ def restored(
 
 def _seen(record: DecisionRecord, policies: Policies) -> Seen:
     """Which analyser results were used: an old result must not be taken for a new one."""
+    received = {reading.tag: reading for reading in record.readings}
     tags = {}
     for tag, found in record.measurements.items():
         policy = policies.tags.get(tag)
         if policy is None or policy.analyser is None or found.sample_time is None:
             continue
+        used_at, result, repeats = found.sample_time + policy.analyser.delay_s, found.value, 1
+        if found.verdict is Verdict.FROZEN and tag in received:
+            # Dead before the restart, dead after it: its newest repetition is no new result.
+            newest = received[tag]
+            used_at = used_at if newest.source_time is None else newest.source_time
+            result, repeats = newest.value, policy.analyser.repeat_limit
         tags[tag] = TagMemory(
             value=found.value,
             sample_time=found.sample_time,
             received_at=record.made_at,
-            source_time=found.sample_time + policy.analyser.delay_s,
-            repeats=1,
-            result=found.value,
+            source_time=used_at,
+            repeats=repeats,
+            result=result,
         )
     return Seen(tags=tags)
 

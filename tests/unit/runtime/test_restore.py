@@ -7,9 +7,12 @@ from dataclasses import replace
 import pytest
 
 from edgectl.cycle.policies import Policies
+from edgectl.cycle.validation import measure
 from edgectl.records.cycle_record import DecisionRecord
 from edgectl.records.encoding import to_json
 from edgectl.records.entries import EntryKind, Json
+from edgectl.records.measurements import Verdict
+from edgectl.records.readings import TagSnapshot
 from edgectl.runtime.restore import Restored, restored
 from edgectl.testing.story import WHO, play
 
@@ -49,6 +52,22 @@ def test_results_that_were_used_are_not_used_again(
     tag = begin(record, policies).state.seen.tags["AI-2116"]
     assert tag.source_time == used + 690.0
     assert tag.result == record.measurements["AI-2116"].value
+
+
+def test_an_analyser_that_was_dead_stays_dead(record: DecisionRecord, policies: Policies) -> None:
+    tag, analyser = "AI-2116", policies.tags["AI-2116"].analyser
+    assert analyser is not None
+    newest = next(reading for reading in record.readings if reading.tag == tag)
+    assert newest.source_time is not None
+    frozen = replace(record.measurements[tag], verdict=Verdict.FROZEN, is_new=False)
+    # The result last used is older than the one that was refused as a repetition.
+    frozen = replace(frozen, sample_time=newest.source_time - analyser.delay_s - 1200.0)
+    dead = replace(record, measurements={**record.measurements, tag: frozen})
+    seen = begin(dead, policies).state.seen.tags
+    again = replace(newest, source_time=newest.source_time + 600.0)
+    for reading in (newest, again):
+        found, _ = measure(TagSnapshot(31, record.made_at + 600.0, (reading,)), seen, policies)
+        assert (found[tag].verdict, found[tag].is_new) == (Verdict.FROZEN, False)
 
 
 def test_the_last_suggestion_still_counts_for_the_pace(
