@@ -13,6 +13,7 @@ from pathlib import Path
 from typing import Any, Final
 
 from edgectl.journal.reader import JournalReader, StoredEntry
+from edgectl.records.advice import Standing
 from edgectl.records.cycle_record import (
     DecisionRecord,
     DeliveryRecord,
@@ -154,11 +155,38 @@ def history_from(entries: Iterable[StoredEntry]) -> History:
             delivery: DeliveryRecord = from_json(DeliveryRecord, entry.body)
             if delivery.decision_seq is not None:
                 history.deliveries[delivery.decision_seq] = delivery
+            if newest is not None and newest.cycle == entry.cycle and _undelivered(delivery):
+                if history.newest_estimate is newest:
+                    history.newest_estimate = _as_held(newest, delivery)
+                newest = history.decisions[-1] = _as_held(newest, delivery)
         elif entry.kind is EntryKind.EVENT:
             history.events.append(Dated(entry.at, from_json(EventRecord, entry.body)))
         elif entry.kind is EntryKind.WITHDRAWAL:
             history.withdrawals.append(Dated(entry.at, from_json(WithdrawalRecord, entry.body)))
     return history
+
+
+def _undelivered(delivery: DeliveryRecord) -> bool:
+    """The decision came too late to be published, or its writes did not all arrive."""
+    return delivery.decision_seq is None or not delivery.delivery.complete
+
+
+def _as_held(record: DecisionRecord, delivery: DeliveryRecord) -> DecisionRecord:
+    """A decision as it stood at the plant: advice that was not delivered was a hold."""
+    if not record.advice.valid:
+        return record
+    reason, why = "not_published", f"publishing failed: {delivery.delivery.problem}"
+    if delivery.decision_seq is None:
+        reason, why = "not_journalled", "the decision could not be recorded in time"
+    advice = replace(
+        record.advice,
+        standing=Standing.HOLDING,
+        valid=False,
+        reason=reason,
+        sentence=f"Last move held: {why}.",
+        moves=tuple(replace(move, changed=False) for move in record.advice.moves),
+    )
+    return replace(record, advice=advice)
 
 
 def _slim(record: DecisionRecord, *, keep_predictions: bool) -> DecisionRecord:
