@@ -150,11 +150,6 @@ def held_instead(
     return replace(state, advice=held), held
 
 
-def silenced(state: LoopState) -> LoopState:
-    """After the advice was withdrawn because the runtime ends."""
-    return replace(state, standing=after(state.standing, Event.FORBIDDEN))
-
-
 # -- judging ----------------------------------------------------------------------------
 
 

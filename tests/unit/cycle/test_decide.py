@@ -7,7 +7,7 @@ from typing import Any
 
 import pytest
 
-from edgectl.cycle.decide import GIVEN_UP_AFTER, before_asking, decide, held_instead, silenced
+from edgectl.cycle.decide import GIVEN_UP_AFTER, before_asking, decide, held_instead
 from edgectl.cycle.positions import Seen, Validated
 from edgectl.cycle.standing import StandingState
 from edgectl.cycle.state import Decision, LoopState
@@ -186,7 +186,3 @@ def test_after_silence_nothing_of_before_stands(case: Any) -> None:
     assert back.valid
     assert {move.reason for move in back.moves} == {"no_change"}
     assert [move.target for move in back.moves] == [9000.0, 98.0]
-
-
-def test_the_end_is_silent(case: Any) -> None:
-    assert silenced(WARM).standing.standing is Standing.SILENT
