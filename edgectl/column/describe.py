@@ -172,12 +172,8 @@ def _tray(table: Table) -> SieveTray:
     return SieveTray(
         active_area_m2=table["active_area_m2"],
         downcomer_area_m2=table["downcomer_area_m2"],
-        net_area_m2=table["net_area_m2"],
-        hole_area_m2=table["hole_area_m2"],
-        orifice_coefficient=table["orifice_coefficient"],
         weir_length_m=table["weir_length_m"],
         weir_height_m=table["weir_height_m"],
-        tray_spacing_m=table["tray_spacing_m"],
         aeration=table["aeration"],
     )
 

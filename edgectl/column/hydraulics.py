@@ -24,12 +24,8 @@ class SieveTray:
 
     active_area_m2: float
     downcomer_area_m2: float
-    net_area_m2: float
-    hole_area_m2: float
-    orifice_coefficient: float
     weir_length_m: float
     weir_height_m: float
-    tray_spacing_m: float
     aeration: float
 
 

@@ -139,7 +139,10 @@ def _input_tags(site: Table, loop_stage: int) -> InputTags:
     point = site["operating_point"]
     return InputTags(
         feed_flow=required("feed_flow"),
-        feed_temperature=tag("feed_temperature"),
+        # Fed forward only where the site file says so; else the operating point's counts.
+        feed_temperature=next(
+            (d["measured"] for d in site["dv"].values() if d["kind"] == "feed_temperature"), None
+        ),
         reflux_flow=required("reflux_flow"),
         distillate_flow=required("distillate_flow"),
         tray_temperature=tray,

@@ -1,4 +1,4 @@
-"""Engineering units: UNECE Rec. 20 common codes and conversions.
+"""Engineering units: UNECE Rec. 20 common codes and what they measure.
 
 The OPC UA unit id is the common code's characters as a big-endian integer
 (OPC 10000-8, 5.6.3). An OPC UA unit cannot tell mass from mole fractions or
@@ -62,13 +62,3 @@ UNITS: Final[dict[str, Unit]] = {
         Unit("-", "C62", "dimensionless", 1.0),
     )
 }
-
-
-def to_si(value: float, unit: Unit) -> float:
-    """The value in the SI unit of its quantity."""
-    return value * unit.scale + unit.offset
-
-
-def from_si(value: float, unit: Unit) -> float:
-    """The SI value in `unit`."""
-    return (value - unit.offset) / unit.scale

@@ -99,8 +99,17 @@ def mv_details_fit(parts: Parts) -> Iterator[Complaint]:
     """A kind of MV occurs once and has the keys it needs and no others.
 
     `[mv.*.loop]` belongs to a temperature setpoint; `in_ratio_to` to reflux,
-    together with `ratio_filter_min`.
+    together with `ratio_filter_min`. The model needs a temperature setpoint.
     """
+    if parts.mv and len(parts.mv) == len(parts.names("mv")):
+        kinds = {mv.kind for mv in parts.mv.values()}
+        if "tray_temperature_setpoint" not in kinds:
+            yield Complaint(
+                ("mv",),
+                MISSING,
+                "an MV of kind tray_temperature_setpoint",
+                "the model follows the column through that loop: add it",
+            )
     seen: dict[str, str] = {}
     for name, mv in parts.mv.items():
         path = ("mv", name)
@@ -289,7 +298,7 @@ def cv_limits_nest(parts: Parts) -> Iterator[Complaint]:
 def dv_tags_fit(parts: Parts) -> Iterator[Complaint]:
     """A DV's tag exists, its role is the DV's kind, and it is required or has a substitute.
 
-    Each kind of DV occurs once.
+    Each kind of DV occurs once. A feed_flow has a `filter_min`, a feed_temperature none.
     """
     seen: dict[str, str] = {}
     for name, dv in parts.dv.items():
@@ -309,6 +318,12 @@ def dv_tags_fit(parts: Parts) -> Iterator[Complaint]:
             yield Complaint(
                 (*path, "kind"), dv.kind, "each kind of DV once", f"DV {first} has it already"
             )
+        elif dv.kind == "feed_flow" and dv.filter_min is None:
+            yield Complaint(
+                (*path, "filter_min"), MISSING, f"needed for {dv.kind}", "add `filter_min`"
+            )
+        elif dv.kind != "feed_flow" and dv.filter_min is not None:
+            yield Complaint((*path, "filter_min"), dv.filter_min, f"not for {dv.kind}", "remove it")
 
 
 def _named(

@@ -7,7 +7,6 @@ import math
 from collections.abc import Callable, Iterator
 from typing import Final
 
-from edgectl.records.units import UNITS, from_si, to_si
 from edgectl.settings.checks_tags import in_range
 from edgectl.settings.column import Column, OperatingPoint, Trays
 from edgectl.settings.findings import MISSING, Complaint
@@ -184,7 +183,6 @@ def _tray_bounds(trays: Trays, total_m2: float) -> tuple[tuple[str, float, str],
         ("net_area_m2", total_m2, "the column's cross-section"),
         ("active_area_m2", trays.net_area_m2, "the net area"),
         ("downcomer_area_m2", total_m2 - trays.net_area_m2, "cross-section less net area"),
-        ("hole_area_m2", trays.active_area_m2, "the active area"),
         ("weir_length_m", trays.diameter_m, "the diameter"),
         ("weir_height_m", trays.tray_spacing_m, "the tray spacing"),
     )
@@ -231,10 +229,9 @@ def operating_point_is_sane(parts: Parts) -> Iterator[Complaint]:
 
 def _inside_tag(parts: Parts, role: Role, key: str, value: float, unit: str) -> Iterator[Complaint]:
     for name, tag in parts.tags.items():
-        own = tag.engineering_unit
-        if tag.role is not role or own.quantity != UNITS[unit].quantity:
+        if tag.role is not role or tag.unit != unit:
             continue
-        if not in_range(tag, from_si(to_si(value, UNITS[unit]), own)):
+        if not in_range(tag, value):
             yield Complaint(
                 ("operating_point", key),
                 value,

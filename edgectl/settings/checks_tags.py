@@ -27,23 +27,20 @@ AT_MOST_ONE: Final = (
 _FLOWS: Final = tuple(
     unit.name for unit in UNITS.values() if unit.quantity in ("mass_flow", "molar_flow")
 )
-_TEMPERATURES: Final = tuple(u.name for u in UNITS.values() if u.quantity == "temperature")
-_PRESSURES: Final = tuple(u.name for u in UNITS.values() if u.quantity == "pressure")
-_FRACTIONS: Final = tuple(u.name for u in UNITS.values() if u.quantity == "fraction")
 UNITS_OF_ROLE: Final[dict[Role, tuple[str, ...]]] = {
-    # A volume flow would need a density nobody measures here.
-    Role.FEED_FLOW: _FLOWS,
-    Role.FEED_TEMPERATURE: _TEMPERATURES,
-    Role.REFLUX_FLOW: _FLOWS,
+    # What the model takes is not converted: another unit would be read as this one.
+    Role.FEED_FLOW: ("kg/h",),
+    Role.FEED_TEMPERATURE: ("degC",),
+    Role.REFLUX_FLOW: ("kg/h",),
     Role.STEAM_FLOW: _FLOWS,
-    Role.DISTILLATE_FLOW: _FLOWS,
+    Role.DISTILLATE_FLOW: ("kg/h",),
     Role.BOTTOMS_FLOW: _FLOWS,
-    Role.TRAY_TEMPERATURE: _TEMPERATURES,
-    Role.TOP_PRESSURE: _PRESSURES,
-    Role.DIFFERENTIAL_PRESSURE: _PRESSURES,
+    Role.TRAY_TEMPERATURE: ("degC",),
+    Role.TOP_PRESSURE: ("kPa",),
+    Role.DIFFERENTIAL_PRESSURE: ("kPa",),
     Role.DRUM_LEVEL: ("%",),
     Role.SUMP_LEVEL: ("%",),
-    Role.ANALYSER: _FRACTIONS,
+    Role.ANALYSER: ("%", "wt %", "wt ppm"),
     Role.LOOP_SETPOINT: tuple(UNITS),
     Role.LOOP_OUTPUT: ("%",),
     Role.LOOP_MODE: ("-",),
@@ -71,7 +68,7 @@ def bases_of(tag: Tag) -> tuple[Basis, ...]:
     if unit.quantity == "pressure" and tag.role is not Role.DIFFERENTIAL_PRESSURE:
         return (Basis.ABSOLUTE, Basis.GAUGE)
     if tag.role is Role.ANALYSER:
-        return (Basis.MASS, Basis.MOLE)
+        return (Basis.MASS,)
     return (Basis.NONE,)
 
 

@@ -61,8 +61,6 @@ class Component(Section):
     """Liquid heat capacity in J/(mol K): k0 + k1 T + k2 T^2, T in K."""
     liquid_density: Coefficients
     """Liquid molar density in mol/m3: k0 + k1 T + k2 T^2, T in K."""
-    surface_tension_n_m: Annotated[Number, Field(gt=0, lt=1)]
-    """Surface tension, for the flooding estimate."""
 
 
 class Wilson(Section):
@@ -86,23 +84,19 @@ class Trays(Section):
     holdup: Literal["linear_weir"]
     """How liquid is held: a Francis weir, linearised at the operating point."""
     diameter_m: Positive
-    """Inner diameter of the column."""
+    """Inner diameter of the column; only bounds areas and weir."""
     active_area_m2: Positive
     """Bubbling area of one tray."""
     downcomer_area_m2: Positive
     """Area of one downcomer."""
     net_area_m2: Positive
-    """Area open to vapour above a tray."""
-    hole_area_m2: Positive
-    """Sum of the holes of one tray."""
-    orifice_coefficient: Annotated[Number, Field(gt=0, le=1)]
-    """Discharge coefficient of the holes."""
+    """Area open to vapour above a tray; only bounds the other two."""
     weir_length_m: Positive
     """Length of the outlet weir, over all passes."""
     weir_height_m: Positive
     """Height of the outlet weir."""
     tray_spacing_m: Positive
-    """Distance between trays."""
+    """Distance between trays; only bounds the weir's height."""
     aeration: Annotated[Number, Field(gt=0, le=1)]
     """Clear liquid over the weir height."""
 

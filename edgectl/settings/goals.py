@@ -128,8 +128,8 @@ class DisturbanceVariable(Section):
     """Tag that measures it."""
     kind: Literal["feed_flow", "feed_temperature"]
     """What it is to the column; also the role of the tag."""
-    filter_min: NotNegative
-    """Time constant of its filter."""
+    filter_min: NotNegative | None = None
+    """Time constant of the filter on the feed flow, and with it on reflux and the loop's tray."""
 
 
 class Estimation(Section):

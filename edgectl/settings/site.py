@@ -29,8 +29,6 @@ class About(Section):
 
     name: Text
     """Name of the site, for people."""
-    column: Text
-    """Tag of the column."""
 
 
 class Server(Section):

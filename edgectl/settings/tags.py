@@ -50,8 +50,9 @@ class Analyser(Section):
 
     cycle_s: Positive
     """Plant seconds between results."""
-    delay_s: NotNegative
-    """Plant seconds from the sample to the result's source timestamp."""
+    delay_s: Annotated[Number, Field(ge=0, le=2400)]
+    """Plant seconds from the sample to the result's source timestamp; the model's own past is
+    kept no longer."""
     detection_limit: NotNegative
     """In the tag's unit; a result at or below it means "at most"."""
     repeat_limit: Annotated[int, Field(ge=2, le=1000)]
