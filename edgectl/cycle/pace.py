@@ -134,9 +134,13 @@ def asked(state: PaceState, choice: Choice, now: float) -> tuple[float, ...]:
 
 
 def breaks_alone(plan: Plan, policies: Policies, asks: set[str] | frozenset[str]) -> bool:
-    """Whether these moves, without the plan's others, would break a hard limit."""
+    """Whether these moves, without the plan's others, would break a hard limit.
+
+    That of a dropped CV too: the plan leaves it out, and what is cheap would walk straight
+    through it while nobody measures.
+    """
     paths = {p.cv: _path(plan, p.cv, asks) for p in plan.predictions}
-    return any(True for _ in worsened_hard_limits(plan, policies, paths))
+    return any(True for _ in worsened_hard_limits(plan, policies, paths, dropped_too=True))
 
 
 def _path(plan: Plan, cv: str, asks: set[str] | frozenset[str]) -> Sequence[float]:

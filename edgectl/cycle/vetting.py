@@ -107,15 +107,21 @@ def standing_reach(policy: MovePolicy) -> float:
 
 
 def worsened_hard_limits(
-    plan: Plan, policies: Policies, paths: Mapping[str, Sequence[float]]
+    plan: Plan,
+    policies: Policies,
+    paths: Mapping[str, Sequence[float]],
+    *,
+    dropped_too: bool = False,
 ) -> Iterator[str]:
     """Hard limits that these paths break, or break further than doing nothing would.
 
-    A limit that the plan itself says gives way is named, not hidden: no finding.
+    A limit that the plan itself says gives way is named, not hidden: no finding. A dropped
+    CV fails no plan; with `dropped_too` the model's word, all there is of it, still counts.
     """
     for prediction in plan.predictions:
         policy = policies.cvs[prediction.cv]
-        if policy.cv in plan.gives_way or _state(plan, policy.cv) == "dropped":
+        dropped = _state(plan, policy.cv) == "dropped" and not dropped_too
+        if policy.cv in plan.gives_way or dropped:
             continue
         with_moves = hard_excess(policy, paths[policy.cv])
         without = hard_excess(policy, prediction.without_moves)

@@ -9,6 +9,7 @@ import pytest
 
 from edgectl.cycle.pace import Choice, PaceState, as_it_stands, choose, outside_reach
 from edgectl.cycle.suggestion import Suggestion
+from edgectl.cycle.vetting import worsened_hard_limits
 from edgectl.records.measurements import MovePosition, Service
 from edgectl.records.plan import Plan
 from edgectl.testing.toy import REFLUX, TRAY
@@ -265,3 +266,13 @@ def test_nothing_is_asked_while_the_base_layer_moves_the_mv(case: Any) -> None:
     assert not pick(case, plan, positions=at(case, REFLUX, drift=90.0)).new
     assert not pick(case, plan, positions=at(case, REFLUX, drift=-90.0)).new
     assert pick(case, plan, positions=at(case, REFLUX, drift=70.0)).new
+
+
+def test_nobody_is_asked_to_walk_through_the_limit_of_a_dropped_cv(case: Any) -> None:
+    planned = case.planned(reflux=(8900.0, 8800.0), **QUIET)
+    plan = alone(case, planned, both=700.0, none=300.0, reflux=700.0, tray=300.0)
+    cvs = tuple(replace(e, state="dropped") if e.cv == "BOTTOMS" else e for e in plan.estimate.cvs)
+    plan = replace(plan, estimate=replace(plan.estimate, cvs=cvs))
+    paths = {p.cv: p.with_moves for p in plan.predictions}
+    assert not list(worsened_hard_limits(plan, case.policies, paths)), "no reason to hold"
+    assert not pick(case, plan).asks
