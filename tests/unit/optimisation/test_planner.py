@@ -115,6 +115,7 @@ def test_an_analyser_that_contradicts_the_model_is_a_warning(
         answer = planner.answer(request)
         assert isinstance(answer, Plan)
         memory = answer.estimate.memory
+    assert isinstance(answer, Plan)
     assert answer.estimate.warnings == ("bias_at_clip",)
     # It dies and is dropped: what is left out of the plan is no reason to be silent for ever.
     later = replace(request_at(site_table, at + 10_900.0), memory=memory)
