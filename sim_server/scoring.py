@@ -62,6 +62,8 @@ class Score:
     from_s: float
     to_s: float
     qualities: tuple[QualityScore, ...]
+    in_spec_fraction: float
+    """All products within specification at once [-]."""
     energy_kwh_per_t_distillate: float
     usable_fraction: float
     """Share of the time in which the plant called the advice usable."""
@@ -131,6 +133,10 @@ def score(
         from_s=rows[0]["time_s"],
         to_s=rows[-1]["time_s"],
         qualities=tuple(_quality(rows, spec) for spec in specifications),
+        in_spec_fraction=sum(
+            all(row[spec.column] < spec.high for spec in specifications) for row in rows
+        )
+        / len(rows),
         energy_kwh_per_t_distillate=1000.0 * sum(row[TRUE_DUTY] for row in rows) / distillate,
         usable_fraction=sum(row["advice_usable"] for row in rows) / len(rows),
         crew_actions=int(truth_rows[-1]["crew_actions"]),

@@ -92,6 +92,7 @@ async def demo_result(site: Site, folder: Path, story: Story, pace: Pace) -> Dem
         "writes_outside_fence": writes.outside_fence,
         "refused_writes": writes.refused,
         "cv": {} if score is None else cv_scores(site, score),
+        "in_spec_fraction": score and score["in_spec_fraction"],
         "energy_kwh_per_t_distillate": score and score["energy_kwh_per_t_distillate"],
         "advice_usable_fraction": score and score["usable_fraction"],
         "journal": str(journal),

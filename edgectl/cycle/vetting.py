@@ -115,13 +115,15 @@ def worsened_hard_limits(
 ) -> Iterator[str]:
     """Hard limits that these paths break, or break further than doing nothing would.
 
-    A limit that the plan itself says gives way is named, not hidden: no finding. A dropped
+    A limit that the plan says gives way, and that doing nothing would not keep either by our
+    own reckoning, is named, not hidden: no finding. A dropped
     CV fails no plan; with `dropped_too` the model's word, all there is of it, still counts.
     """
     for prediction in plan.predictions:
         policy = policies.cvs[prediction.cv]
         dropped = _state(plan, policy.cv) == "dropped" and not dropped_too
-        if policy.cv in plan.gives_way or dropped:
+        lost_anyway = policy.cv in plan.gives_way and _leaves_planned(plan, policy, prediction)
+        if lost_anyway or dropped:
             continue
         with_moves = hard_excess(policy, paths[policy.cv])
         without = hard_excess(policy, prediction.without_moves)
@@ -131,6 +133,15 @@ def worsened_hard_limits(
                 f"{policy.cv} would break its limit of {limit:g} {policy.unit},"
                 " and would not without the moves"
             )
+
+
+def _leaves_planned(plan: Plan, policy: CvPolicy, prediction: CvPrediction) -> bool:
+    """Whether the planned limits are broken when nothing is moved."""
+    estimate = next(found for found in plan.estimate.cvs if found.cv == policy.cv)
+    values = prediction.without_moves
+    too_high = estimate.high is not None and max(values) > estimate.high
+    too_low = estimate.low is not None and min(values) < estimate.low
+    return too_high or too_low
 
 
 def hard_excess(policy: CvPolicy, path: Sequence[float]) -> float:

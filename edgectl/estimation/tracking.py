@@ -27,6 +27,8 @@ LONGEST_STEP_S = 60.0
 SETTLING_H = 8.0
 """Model hours a cold start runs in for, at the present measurements."""
 LEVEL_FILTER_H = 2.0 / 60.0
+FIRST_RESULT_CLIPS = 3.0
+"""A first result this many clips away from the model is not taken at its word [-]."""
 HISTORY_S = 2400.0
 """How far back a late analyser result may reach."""
 
@@ -307,8 +309,9 @@ def corrected(
     if at_most:
         innovation = min(0.0, innovation)
     clip = settings.innovation_clip
-    # The first result sets the bias: there is nothing to filter against yet.
-    if bias.sample_time is None:
+    # The first result sets the bias, for there is nothing to filter against yet; one that is
+    # beyond all expectation is only believed step by step, as a later one would be.
+    if bias.sample_time is None and abs(innovation) <= FIRST_RESULT_CLIPS * clip:
         return Bias(bias.value + innovation, sample_time)
     step = settings.filter_gain * min(max(innovation, -clip), clip)
     clipped = bias.clipped + 1 if abs(innovation) > clip else 0

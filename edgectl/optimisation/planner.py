@@ -75,8 +75,7 @@ class Planner:
         self._engine: Engine = CollocationEngine(
             self._parts.looped, self._parts.goals, site["planning"]["max_iterations"], wall
         )
-        model = {key: site[key] for key in ("column", "operating_point", "estimation", "planning")}
-        self.model_hash = hashlib.sha256(dumps(model)).hexdigest()
+        self.model_hash = _model_hash(site)
 
     @property
     def engine(self) -> str:
@@ -263,6 +262,21 @@ class Planner:
             plan_ms=1e3 * (now - estimated),
             total_ms=1e3 * (now - begun),
         )
+
+
+def _model_hash(site: Mapping[str, Any]) -> str:
+    """Of all that gives the memory's numbers their meaning; limits and prices are not in it."""
+    meaning: dict[str, Any] = {
+        key: site[key] for key in ("column", "operating_point", "estimation", "planning")
+    }
+    meaning["cv"] = {
+        name: [cv["kind"], cv["unit"], cv["coordinate"], cv["measured"]]
+        for name, cv in site["cv"].items()
+    }
+    meaning["mv"] = {
+        name: [mv["kind"], mv["unit"], mv.get("loop")] for name, mv in site["mv"].items()
+    }
+    return hashlib.sha256(dumps(meaning)).hexdigest()
 
 
 def build_brain(site: Mapping[str, Any], wall: Callable[[], float]) -> Planner:

@@ -55,8 +55,9 @@ def _tag(name: str, tag: Tag) -> TagPolicy:
         high=tag.high,
         stale_after_s=tag.stale_limit_s,
         required=tag.required,
-        # An uncertain value may stand in for nothing, never for what the plan rests on.
-        use_uncertain=not tag.required,
+        # Uncertain is good enough for what the plan can do without; never for what it rests
+        # on, nor for an analyser, whose result would stay in the bias.
+        use_uncertain=not tag.required and analyser is None,
         rate_limit_per_min=tag.rate_limit_per_min,
         substitute=tag.substitute,
         analyser=None

@@ -119,6 +119,12 @@ def test_an_innovation_is_clipped_but_the_first_result_sets_the_bias() -> None:
     assert corrected(Bias(0.0, None), SETTINGS, 1.0, 0.9, 0.0, False).value == pytest.approx(0.9)
 
 
+def test_a_first_result_beyond_all_expectation_is_not_taken_at_its_word() -> None:
+    bias = corrected(Bias(0.0, None), SETTINGS, 1.0, 5.0, 0.0, False)
+    assert bias.value == pytest.approx(0.16)
+    assert bias.clipped == 1
+
+
 def test_results_beyond_belief_are_counted_in_a_row() -> None:
     bias = Bias(0.0, 0.0)
     for sample in (1.0, 2.0, 3.0):

@@ -31,6 +31,7 @@ def test_a_run_is_scored_after_its_first_hour() -> None:
     assert bottoms.in_spec_fraction == 0.5
     assert bottoms.mean_abs_error is None
     assert distillate.in_spec_fraction == 1.0
+    assert result.in_spec_fraction == 0.5
     assert distillate.mean_abs_error is None
     assert result.energy_kwh_per_t_distillate == pytest.approx(800.0)
     assert result.crew_actions == 2
