@@ -139,7 +139,9 @@ def _product_words(content: Mapping[str, Any]) -> list[str]:
         for cv in content["cv"].values()
     ]
     energy = content["energy_kwh_per_t_distillate"]
-    if energy is not None:
+    if energy is None:
+        words.append("The plant's true values could not be scored: too short a run, or no plant.")
+    else:
         words.append(f"Energy: {energy:.1f} kWh per tonne of distillate.")
     return words
 

@@ -6,12 +6,13 @@ from pathlib import Path
 from types import TracebackType
 from typing import Self
 
-from edgectl.console.history import SiteWords
+from edgectl.console.history import SiteWords, as_delivered
 from edgectl.console.live import LiveView
 from edgectl.console.svg import clock_words
 from edgectl.journal.reader import JournalReader, JournalUnreadableError, StoredEntry
 from edgectl.records.cycle_record import (
     DecisionRecord,
+    DeliveryRecord,
     EventRecord,
     OpeningRecord,
     WithdrawalRecord,
@@ -28,6 +29,7 @@ class JournalFollower:
         self._reader: JournalReader | None = None
         self._next_seq = 1
         self._site = SiteWords({})
+        self._decided: DecisionRecord | None = None
 
     def __enter__(self) -> Self:
         return self
@@ -61,7 +63,12 @@ class JournalFollower:
             self._site = SiteWords(opening.site_content)
             view.event(f"{clock_words(entry.at)} started, {opening.restored}")
         elif entry.kind is EntryKind.DECISION:
-            view.show(from_json(DecisionRecord, entry.body), self._site)
+            # Shown with its delivery: until then nobody knows what stands at the plant.
+            self._decided = from_json(DecisionRecord, entry.body)
+        elif entry.kind is EntryKind.DELIVERY and self._decided is not None:
+            delivery: DeliveryRecord = from_json(DeliveryRecord, entry.body)
+            view.show(as_delivered(self._decided, delivery), self._site)
+            self._decided = None
         elif entry.kind is EntryKind.EVENT:
             event: EventRecord = from_json(EventRecord, entry.body)
             view.event(f"{clock_words(entry.at)} {event.sentence}")

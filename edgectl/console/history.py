@@ -155,10 +155,11 @@ def history_from(entries: Iterable[StoredEntry]) -> History:
             delivery: DeliveryRecord = from_json(DeliveryRecord, entry.body)
             if delivery.decision_seq is not None:
                 history.deliveries[delivery.decision_seq] = delivery
-            if newest is not None and newest.cycle == entry.cycle and _undelivered(delivery):
+            if newest is not None and newest.cycle == entry.cycle:
+                stood = as_delivered(newest, delivery)
                 if history.newest_estimate is newest:
-                    history.newest_estimate = _as_held(newest, delivery)
-                newest = history.decisions[-1] = _as_held(newest, delivery)
+                    history.newest_estimate = stood
+                newest = history.decisions[-1] = stood
         elif entry.kind is EntryKind.EVENT:
             history.events.append(Dated(entry.at, from_json(EventRecord, entry.body)))
         elif entry.kind is EntryKind.WITHDRAWAL:
@@ -166,14 +167,11 @@ def history_from(entries: Iterable[StoredEntry]) -> History:
     return history
 
 
-def _undelivered(delivery: DeliveryRecord) -> bool:
-    """The decision came too late to be published, or its writes did not all arrive."""
-    return delivery.decision_seq is None or not delivery.delivery.complete
-
-
-def _as_held(record: DecisionRecord, delivery: DeliveryRecord) -> DecisionRecord:
-    """A decision as it stood at the plant: advice that was not delivered was a hold."""
-    if not record.advice.valid:
+def as_delivered(record: DecisionRecord, delivery: DeliveryRecord) -> DecisionRecord:
+    """A decision as it stood at the plant: advice that did not arrive there was a hold."""
+    # Too late to be published, or its writes did not all arrive.
+    undelivered = delivery.decision_seq is None or not delivery.delivery.complete
+    if not (undelivered and record.advice.valid):
         return record
     reason, why = "not_published", f"publishing failed: {delivery.delivery.problem}"
     if delivery.decision_seq is None:

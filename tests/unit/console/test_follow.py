@@ -46,6 +46,9 @@ def test_each_entry_is_shown_once_as_it_comes(
         assert said.getvalue().count("started, cold") == 1
         store.append(columns_of(next(entries)))
         follower.show_new(view)
+        assert "starting" not in said.getvalue(), "shown before it was known to be delivered"
+        store.append(columns_of(next(entries)))
+        follower.show_new(view)
         assert said.getvalue().count("06:00  starting") == 1
     store.close()
 
