@@ -73,6 +73,5 @@ def _severity(measurement: Measurement) -> str:
 def _of_moves(measurements: Measurements, policies: Policies) -> Iterator[Condition]:
     for mv, at in measurements.positions.items():
         if at.reason != "in_service":
-            why = sentences.WITHHELD.get(at.reason, at.reason)
-            words = f"{mv} ({policies.moves[mv].description}) is not moved: {why}."
+            words = f"{mv} ({policies.moves[mv].description}) {sentences.withheld_words(at)}."
             yield Condition("move_withheld", mv, CHECK, words)

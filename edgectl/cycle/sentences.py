@@ -13,7 +13,13 @@ from typing import Final
 from edgectl.cycle.cost import coordinate
 from edgectl.cycle.policies import CvPolicy, MovePolicy, Policies
 from edgectl.cycle.vetting import Vetting
-from edgectl.records.measurements import Measurement, Measurements, Verdict
+from edgectl.records.measurements import (
+    Measurement,
+    Measurements,
+    MovePosition,
+    Service,
+    Verdict,
+)
 from edgectl.records.plan import CvLimits, CvPrediction, Plan
 
 WORTH_SAYING: Final = 1e-6
@@ -32,7 +38,7 @@ _VERDICTS: Final[Mapping[Verdict, str]] = {
     Verdict.MISSING: "was not delivered",
 }
 
-WITHHELD: Final[Mapping[str, str]] = {
+_WITHHELD: Final[Mapping[str, str]] = {
     "mode_unknown": "the mode of its loop cannot be read",
     "loop_in_manual": "its loop does not follow its setpoint (manual)",
     "setpoint_unknown": "its setpoint cannot be read",
@@ -40,6 +46,13 @@ WITHHELD: Final[Mapping[str, str]] = {
     "limits_crossed": "its lower limit is not below its upper one",
     "not_followed": "its measured value does not follow its setpoint",
     "output_saturated": "its valve is at its end",
+}
+
+_WITHHELD_WAY: Final[Mapping[Service, str]] = {
+    Service.FREE: "is not moved",
+    Service.FIXED: "is not moved",
+    Service.RAISE_ONLY: "is not lowered",
+    Service.LOWER_ONLY: "is not raised",
 }
 
 
@@ -72,6 +85,11 @@ def tag_words(found: Measurement, policies: Policies) -> str:
     """`TI-2107 (tray 30 temperature) has bad quality`."""
     described = policies.tags[found.tag].description
     return f"{found.tag} ({described}) {_VERDICTS[found.verdict]}"
+
+
+def withheld_words(at: MovePosition) -> str:
+    """`is not raised: its valve is at its end`: a valve at one end can still go the other way."""
+    return f"{_WITHHELD_WAY[at.service]}: {_WITHHELD.get(at.reason, at.reason)}"
 
 
 def missing_words(measurements: Measurements, policies: Policies) -> str:
@@ -157,8 +175,7 @@ def notices(measurements: Measurements, plan: Plan | None, policies: Policies) -
     ]
     for mv, at in measurements.positions.items():
         if at.reason != "in_service":
-            why = WITHHELD.get(at.reason, at.reason)
-            told.append(f"{mv} ({policies.moves[mv].description}) is not moved: {why}.")
+            told.append(f"{mv} ({policies.moves[mv].description}) {withheld_words(at)}.")
     for cv in () if plan is None else plan.gives_way:
         policy = policies.cvs[cv]
         told.append(f"Not all limits can be kept: that of {policy.description} ({cv}) gives way.")

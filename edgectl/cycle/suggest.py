@@ -101,8 +101,7 @@ def _move(
     if found.asks:
         reason, words = "taken", f"{mv} was moved to {there} as suggested."
     if at.reason != "in_service":
-        why = sentences.WITHHELD.get(at.reason, at.reason)
-        reason, words = at.reason, f"{mv} is not moved: {why}."
+        reason, words = at.reason, f"{mv} {sentences.withheld_words(at)}."
     return SuggestedMove(mv, found.target, False, found.made_at, reason, words)
 
 

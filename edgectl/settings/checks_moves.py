@@ -50,7 +50,7 @@ def mv_tags_fit(parts: Parts) -> Iterator[Complaint]:
 
     `position` is a loop_setpoint, `output` a loop_output, `mode` a loop_mode,
     `measured` the reflux_flow or a tray_temperature, `in_ratio_to` the feed_flow;
-    `loop.stage` is the stage of `measured`.
+    `loop.stage` is the stage of `measured`; the tags of `position` and `mode` are required.
     """
     for name, mv in parts.mv.items():
         path = ("mv", name)
@@ -61,6 +61,11 @@ def mv_tags_fit(parts: Parts) -> Iterator[Complaint]:
         measured = yield from _named(parts, (*path, "measured"), mv.measured, measured_by, mv.unit)
         yield from _named(parts, (*path, "output"), mv.output, Role.LOOP_OUTPUT, None)
         mode = yield from _named(parts, (*path, "mode"), mv.mode, Role.LOOP_MODE, None)
+        for key, tag in (("position", position), ("mode", mode)):
+            if tag is not None and not tag.required:
+                # Nobody may be told to move what nobody knows the place of.
+                words = "a tag with required = true"
+                yield Complaint((*path, key), getattr(mv, key), words, "write it in the tag")
         if measured is not None and position is not None and measured.basis != position.basis:
             yield Complaint(
                 (*path, "position"),

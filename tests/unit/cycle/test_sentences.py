@@ -97,3 +97,14 @@ def test_a_withheld_move_and_a_limit_that_gives_way_are_named(case: Any) -> None
         "FIC-2103 (reflux flow) is not moved: its loop does not follow its setpoint (manual).",
         "Not all limits can be kept: that of distillate water (DISTILLATE) gives way.",
     )
+
+
+def test_a_valve_at_one_end_forbids_only_that_way(case: Any) -> None:
+    def told(service: Service) -> tuple[str, ...]:
+        found = replace(case.positions[REFLUX], service=service, reason="output_saturated")
+        positions = {**case.positions, REFLUX: found}
+        return notices(replace(case.measurements, positions=positions), None, case.policies)
+
+    head = "FIC-2103 (reflux flow)"
+    assert told(Service.LOWER_ONLY) == (f"{head} is not raised: its valve is at its end.",)
+    assert told(Service.RAISE_ONLY) == (f"{head} is not lowered: its valve is at its end.",)
