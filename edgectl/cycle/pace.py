@@ -161,7 +161,9 @@ def _still_holds(
         return False
     left = standing.target - at.position
     if not standing.open:
-        return abs(left) <= policy.worthwhile_move
+        # A setpoint in ratio wanders with the feed; any other was moved by somebody, and
+        # "stands at" must say where it stands.
+        return abs(left) <= (policy.increment if at.feed is None else policy.worthwhile_move)
     if not _allowed(left, at.service) or abs(left) > standing_reach(policy):
         return False
     planned = move.destination - at.position

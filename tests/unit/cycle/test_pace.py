@@ -151,6 +151,16 @@ def test_when_the_operator_went_elsewhere_the_plan_starts_from_there(case: Any) 
     assert not choice.asks
 
 
+def test_what_stands_at_the_board_follows_a_setpoint_that_somebody_moved(case: Any) -> None:
+    closed = Suggestion(TRAY, 98.0, NOW - 60.0, 98.0, False, "no_change", "", "leave")
+    state = PaceState(suggestions={TRAY: closed}, asked_at=(NOW - 60.0,))
+    moved = at(case, TRAY, position=98.3)
+    choice = pick(
+        case, case.planned(reflux=(9000.0, 9000.0), tray=(98.3, 98.3)), state, positions=moved
+    )
+    assert choice.targets[TRAY] == pytest.approx(98.3)
+
+
 def test_a_taken_suggestion_stays_until_the_plant_wanders_off(case: Any) -> None:
     state = replace(asked_for(9000.0, before=8900.0, outcome="taken"), asked_at=(NOW - 60.0,))
     still = case.planned(reflux=(9000.0, 9000.0), **QUIET)
