@@ -165,6 +165,21 @@ def substitutes_fit(parts: Parts) -> Iterator[Complaint]:
             )
 
 
+def the_switch_is_required(parts: Parts) -> Iterator[Complaint]:
+    """The operator's switch for advice is required and has no substitute.
+
+    While nobody can read whether advice is wanted, none is given.
+    """
+    for name, tag in parts.tags.items():
+        if tag.role is Role.ADVICE_SWITCH and not tag.required:
+            yield Complaint(
+                ("tags", name, "required"),
+                False if "required" in tag.model_fields_set else MISSING,
+                "true",
+                "write required = true: an unread switch must not count as on",
+            )
+
+
 def tag_details_fit(parts: Parts) -> Iterator[Complaint]:
     """A role has the keys it needs and no others.
 
@@ -240,6 +255,7 @@ RULES: Final[tuple[Callable[[Parts], Iterator[Complaint]], ...]] = (
     bases_are_said,
     roles_are_filled,
     substitutes_fit,
+    the_switch_is_required,
     tag_details_fit,
     stages_exist,
     nodes_are_read_once,

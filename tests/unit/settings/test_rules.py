@@ -226,6 +226,13 @@ RELATIONS = [
     ("mv.FIC-2103", '"REFLUX-OP"', '"REFLUX-MODE"', ["mv.FIC-2103.output"], "loop_output"),
     ("mv.FIC-2103", '"REFLUX-MODE"', '"REFLUX-OP"', ["mv.FIC-2103.mode"], "loop_mode"),
     ("mv.FIC-2103", '"FIC-2101"', '"FIC-2105"', ["mv.FIC-2103.in_ratio_to"], "feed_flow"),
+    (
+        "tags.ADVICE-ON",
+        "required = true",
+        "required = false",
+        ["tags.ADVICE-ON.required"],
+        "switch",
+    ),
     ("tags.REFLUX-SP", "required = true", "required = false", ["mv.FIC-2103.position"], "required"),
     ("tags.TRAY30-MODE", "required = true", "required = false", ["mv.TIC-2107.mode"], "required"),
     ("mv.FIC-2103", "[1, 2]", "[1, 1]", ["mv.FIC-2103.automatic_modes[2]"], "each mode once"),
