@@ -36,7 +36,7 @@ PLANT_LIMIT_S: Final = 60.0
 FOLLOW_WALL_S: Final = 0.2
 DEMO_WALL_S: Final = 115.0
 """A demo that was not told how long ends within so much wall time ..."""
-AROUND_WALL_S: Final = 15.0
+AROUND_WALL_S: Final = 10.0
 """... of which so much goes into starting the plant, ending everything and the report."""
 SLOW_CYCLES: Final = (12, 13)
 """The slow-solver drill: two cycles in a row, so that the standby meets it too."""

@@ -26,8 +26,9 @@ BUDGET_SHARE: Final = 0.8
 FASTEST: Final = 60.0
 """The plant and the rest of a cycle need their time too: half a second of wall per 30 s."""
 USUAL_HOURS: Final = 1.0
-STEPS: Final = (1.0, 1.0, 1.08, 1.08, 1.08, 1.0)
-"""Feed relative to the operating point, cycle by cycle: the largest step of the default story."""
+STEPS: Final = (1.0, 1.0, 1.02, 1.045, 1.065, 1.08)
+"""Feed relative to the operating point, cycle by cycle: the default story's largest step at the
+pace at which it comes."""
 
 
 class PaceError(PortError):
