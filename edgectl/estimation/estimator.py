@@ -24,8 +24,6 @@ from edgectl.records.plan import CvEstimate, CvLimits, Estimate, PlanRequest, Pr
 
 CLIPPED_RESULTS = 3
 """Results in a row beyond belief, after which model and analyser contradict each other."""
-LONGEST_GAP_S = 900.0
-"""A memory older than this is not carried on: the model is settled afresh."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -87,6 +85,8 @@ class BiasEstimator:
         The CVs, in the order of every vector of CVs.
     distillate_output : str or None
         CV that gives the distillate's purity to the feed balance.
+    longest_gap_s : float
+        A memory older than this is not carried on: the model is settled afresh [s].
     """
 
     def __init__(
@@ -95,11 +95,13 @@ class BiasEstimator:
         tags: InputTags,
         cvs: Sequence[CvSettings],
         distillate_output: str | None,
+        longest_gap_s: float,
     ) -> None:
         self.tracker = tracker
         self.tags = tags
         self.cvs = tuple(cvs)
         self._distillate_output = distillate_output
+        self._longest_gap_s = longest_gap_s
 
     def estimate(self, request: PlanRequest) -> Belief:
         """The belief that follows from a request.
@@ -132,7 +134,7 @@ class BiasEstimator:
         names = [cv.output.name for cv in self.cvs]
         if request.memory:
             state, biases, history = unpack(request.memory, names)
-            if 0.0 <= request.made_at - state.made_at <= LONGEST_GAP_S:
+            if 0.0 <= request.made_at - state.made_at <= self._longest_gap_s:
                 return state, biases, history, False
             # The biases outlive the state: they age by their own sample times.
             return None, biases, History([], {}), True

@@ -230,7 +230,8 @@ async def _activated(address: ServerAddress) -> Connection:
     try:
         await client.connect()
         await connection.learn_namespaces()
-    except BaseException:  # a cancelled attempt must not leak its socket and tasks either
+    # A cancelled attempt must not leak its socket and tasks either; nothing is swallowed.
+    except BaseException:
         await close_client(client)
         raise
     return connection

@@ -62,6 +62,7 @@ def site_model(site: Table, steady: SteadyState) -> SiteModel:
             for name, cv in site["cv"].items()
         ],
         next((n for n, o in outputs.items() if o.kind == "distillate_heavy_impurity"), None),
+        site["cycle"]["restore_max_age_s"],
     )
     return SiteModel(looped, loop, estimator, _goals(site, outputs))
 

@@ -105,6 +105,17 @@ def test_memory_carries_the_model_on(
     assert len(second.estimate.memory["history_times"]) == 2
 
 
+def test_a_gap_longer_than_the_site_allows_settles_the_model_afresh(
+    planner: Planner, site_table: dict[str, Any], first: Plan
+) -> None:
+    longest_s = site_table["cycle"]["restore_max_age_s"]
+    for gap_s, kept in ((longest_s, 2), (longest_s + 1.0, 1)):
+        request = replace(request_at(site_table, AT + gap_s), memory=first.estimate.memory)
+        answer = planner.answer(request)
+        assert isinstance(answer, Plan)
+        assert len(answer.estimate.memory["history_times"]) == kept
+
+
 def test_an_analyser_that_contradicts_the_model_is_a_warning(
     planner: Planner, site_table: dict[str, Any], first: Plan
 ) -> None:
